@@ -1,0 +1,1 @@
+"""The command line: settings, verbs, run folders, progress.  Only this room imports hydra."""

@@ -1,0 +1,42 @@
+"""From settings to the values the other rooms work with."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import asdict
+from typing import Any
+
+from learnfilter.app.config import SiteConfig, StripConfig
+from learnfilter.core.errors import ConfigError
+from learnfilter.core.strip import Strip, even_strip
+from learnfilter.plan import FloorPlan, read_plan
+from learnfilter.sim.conditions import Conditions
+
+
+def build_strip(settings: StripConfig) -> Strip:
+    """The sensor that `strip` describes."""
+    if settings.bearings_deg is None:
+        bearings = even_strip(settings.first_bearing_deg, settings.bearing_step_deg, settings.columns)
+    else:
+        bearings = tuple(math.radians(bearing) for bearing in settings.bearings_deg)
+    return Strip(
+        bearings_rad=bearings,
+        min_range_m=settings.min_range_m,
+        max_range_m=settings.max_range_m,
+        has_colour=settings.colour,
+        blind=tuple(settings.blind),
+        mount=(settings.mount_x_m, settings.mount_y_m, math.radians(settings.mount_heading_deg)),
+    )
+
+
+def build_conditions(settings: Any) -> Conditions:
+    """How site, light, sensor and robot differ from the plan, from a ConditionConfig."""
+    return Conditions(**asdict(settings))
+
+
+def build_plan(settings: SiteConfig) -> FloorPlan:
+    """The plan that `site.file` names."""
+    if settings.file is None:
+        raise ConfigError("a floor plan is needed", place="site.file", expected="site.file=PATH")
+    options = {} if settings.level is None else {"level": settings.level}
+    return read_plan(settings.file, **options)

@@ -1,0 +1,12 @@
+"""The one table of verbs.
+
+A verb is a module here of the same name: its docstring is its help (first line the summary, with one
+example line that starts with `learnfilter`), and `run(settings)` does it and returns a summary.
+Adding one takes a module, a line in VERBS, its settings in app/config.py and configs/<verb>.yaml.
+"""
+
+from __future__ import annotations
+
+from learnfilter.app.config import Common, PlanConfig, RehearseConfig
+
+VERBS: dict[str, type[Common]] = {"plan": PlanConfig, "rehearse": RehearseConfig}

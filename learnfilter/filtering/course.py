@@ -1,0 +1,66 @@
+"""A drive on a site, cut to what the filter weighs, with the lattice poses of its truth."""
+
+from __future__ import annotations
+
+from typing import NamedTuple
+
+import numpy as np
+import torch
+from numpy.typing import NDArray
+from torch import Tensor
+
+from learnfilter.core.errors import DriveError
+from learnfilter.drives.drive import Drive
+from learnfilter.filtering.rollout import Steps, weighed_steps
+from learnfilter.observe.fitting import nearest_live, sensor_poses
+from learnfilter.render.site import Site
+
+
+class Truth(NamedTuple):
+    """Lattice pose of each step: live cell number [s], heading bin [s], and whether its own cell was
+    live [s] (else the nearest live one stands for it)."""
+
+    cell: Tensor
+    heading: Tensor
+    own: NDArray[np.bool_]
+
+
+class Course(NamedTuple):
+    """One drive on one site, ready for the filter.
+
+    Attributes:
+        name: of the drive.
+        steps: weighed strips and the motion between them.
+        truth: lattice poses.
+        poses: [s 3] sensor reference poses.
+    """
+
+    name: str
+    steps: Steps
+    truth: Truth
+    poses: NDArray[np.float64]
+
+    def __len__(self) -> int:
+        return len(self.steps.rows)
+
+
+def truth_of(site: Site, poses: NDArray[np.float64]) -> Truth:
+    """Lattice poses of sensor poses [s 3]."""
+    cell, heading, own = nearest_live(site, poses)
+    return Truth(torch.from_numpy(cell), torch.from_numpy(heading), own)
+
+
+def course_of(drive: Drive, site: Site, after_m: float, after_rad: float) -> Course:
+    """Cut a drive to its weighed strips and find their lattice poses.
+
+    Raises:
+        DriveError: a weighed strip has no reference pose.
+    """
+    steps = weighed_steps(drive, site.layout, after_m, after_rad)
+    poses = sensor_poses(drive)[steps.rows]
+    if not np.isfinite(poses).all():
+        row = int(steps.rows[np.flatnonzero(~np.isfinite(poses).all(axis=1))[0]])
+        raise DriveError(
+            "no reference pose", file=drive.name, place=f"row {row}", expected="finite x, y, heading"
+        )
+    return Course(drive.name, steps, truth_of(site, poses), poses)

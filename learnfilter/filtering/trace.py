@@ -1,0 +1,87 @@
+"""Run a model's filter along courses and write down, strip by strip, what it believed."""
+
+from __future__ import annotations
+
+import time
+from typing import NamedTuple
+
+import numpy as np
+import torch
+from numpy.typing import NDArray
+
+from learnfilter.core.estimate import entropy, modes
+from learnfilter.filtering.course import Course
+from learnfilter.filtering.grid_filter import lattice_of, start
+from learnfilter.filtering.motion import MotionModel
+from learnfilter.filtering.rollout import rollout
+from learnfilter.observe.contract import ObservationModel
+from learnfilter.render.site import Site
+
+
+class Trace(NamedTuple):
+    """One drive through one filter, from an unknown start.
+
+    Attributes:
+        estimate: [s 3] mean of the best mode, sensor pose.
+        mass: [s] belief near it.
+        log_truth: [s] nats, log-probability of the true lattice pose.
+        entropy: [s] nats.
+        seconds: [s] wall time of each step, an equal share of the batch's.
+        marginals: [s r c] belief summed over headings, where asked, else None.
+    """
+
+    estimate: NDArray[np.float64]
+    mass: NDArray[np.float64]
+    log_truth: NDArray[np.float64]
+    entropy: NDArray[np.float64]
+    seconds: NDArray[np.float64]
+    marginals: NDArray[np.float32] | None
+
+
+@torch.no_grad()
+def trace(
+    model: ObservationModel,
+    motion: MotionModel,
+    site: Site,
+    course: Course,
+    floor: float,
+    steps: int | None = None,
+    features: object = None,
+    keep_marginals: bool = False,
+) -> Trace:
+    """Filter the first `steps` strips of a course.
+
+    Args:
+        model, motion, floor: the filter.
+        site: the plan it was driven on.
+        course: the drive.
+        steps: at most this many strips; None for all.
+        features: `model.read(site)`, if at hand.
+        keep_marginals: keep the belief's plane after each strip, for pictures.
+    """
+    features = model.read(site) if features is None else features
+    lattice = lattice_of(site)
+    count = len(course) if steps is None else min(steps, len(course))
+    flat, heading = lattice.cells[course.truth.cell], course.truth.heading
+    columns: list[tuple] = []
+    planes = []
+    clock = time.perf_counter()
+    states = rollout(
+        start(lattice, 1),
+        course.steps.odometry[:count, None],
+        lambda s: model.log_likelihood(course.steps.strips.at(slice(s, s + 1)), features),
+        lattice,
+        motion,
+        floor,
+    )
+    for step, state in enumerate(states):
+        took = time.perf_counter() - clock
+        belief = state.belief[0]
+        true = float(belief.flatten(1)[heading[step], flat[step]])
+        mode = modes(belief.numpy(), site.grid)[0]
+        columns.append((mode.pose, mode.mass, np.log(max(true, 1e-30)), entropy(belief.numpy()), took))
+        if keep_marginals:
+            planes.append(belief.sum(0).numpy())
+        clock = time.perf_counter()
+    estimate, mass, log_truth, nats, seconds = (np.array(c) for c in zip(*columns, strict=True))
+    return Trace(estimate, mass, log_truth, nats, seconds, np.stack(planes) if keep_marginals else None)

@@ -1,0 +1,47 @@
+"""Sums of models, each under an exponent of its own.
+
+Columns share causes, so their independence is a fiction; an exponent below one pays for it.
+Exponents are the only weights of an analytic model and are learned through the filter.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+import torch
+from torch import Tensor, nn
+
+from learnfilter.observe.contract import ObservationModel, Strips
+from learnfilter.render.site import Site
+
+
+class Blend(ObservationModel):
+    """Sum over parts of exponent x log-likelihood.
+
+    Args:
+        parts: name -> model, all on one layout.
+        exponents: name -> starting exponent, > 0.
+    """
+
+    def __init__(self, parts: Mapping[str, ObservationModel], exponents: Mapping[str, float]):
+        super().__init__()
+        self.layout = next(iter(parts.values())).layout
+        self.parts = nn.ModuleDict(parts)
+        self.log_exponent = nn.ParameterDict(
+            {name: nn.Parameter(torch.tensor(float(exponents[name])).log()) for name in parts}
+        )
+
+    def read(self, site: Site) -> dict[str, Any]:
+        return {name: part.read(site) for name, part in self.parts.items()}
+
+    def part_likelihoods(self, strips: Strips, features: dict[str, Any]) -> dict[str, Tensor]:
+        """[b n h] of each part before its exponent: constants while exponents are tuned."""
+        return {name: part.log_likelihood(strips, features[name]) for name, part in self.parts.items()}
+
+    def blend(self, parts: Mapping[str, Tensor]) -> Tensor:
+        """Sum the parts under the current exponents."""
+        return sum(self.log_exponent[name].exp() * value for name, value in parts.items())
+
+    def log_likelihood(self, strips: Strips, features: dict[str, Any]) -> Tensor:
+        return self.blend(self.part_likelihoods(strips, features))

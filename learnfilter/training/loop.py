@@ -1,0 +1,151 @@
+"""One training loop for every stage: visible, resumable, stopped by iteration."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+from dataclasses import dataclass
+from pathlib import Path
+from typing import NamedTuple, Protocol
+
+import torch
+from torch import Tensor, nn
+
+from learnfilter.training.checkpoint import load_tensors, pack, save_tensors, unpack
+
+
+@dataclass(frozen=True)
+class StageSettings:
+    """How one stage is run.
+
+    Attributes:
+        name: of the stage; its checkpoint and its curves carry it.
+        iterations: optimiser steps; zero skips the stage.
+        learning_rate: peak; warms up over `warm_up` iterations, then falls along a cosine.
+        warm_up: iterations.
+        clip: largest norm of the gradient.
+        validate_every: iterations between validations; checkpoints are written then too.
+        patience: validations without improvement before the stage stops.
+    """
+
+    name: str
+    iterations: int
+    learning_rate: float = 3e-3
+    warm_up: int = 20
+    clip: float = 1.0
+    validate_every: int = 50
+    patience: int = 6
+
+    def rate(self, iteration: int) -> float:
+        """Learning rate at an iteration."""
+        warm = min(1.0, (iteration + 1) / max(self.warm_up, 1))
+        return self.learning_rate * warm * 0.5 * (1 + math.cos(math.pi * iteration / max(self.iterations, 1)))
+
+
+class Validation(NamedTuple):
+    """score: lower is better; curves: further numbers to log."""
+
+    score: float
+    curves: dict[str, float]
+
+
+class Log(Protocol):
+    """Where numbers of a run go: scalar(tag, value, iteration)."""
+
+    def __call__(self, tag: str, value: float, iteration: int) -> None: ...
+
+
+class StageResult(NamedTuple):
+    """What a stage did.
+
+    Attributes:
+        iterations: how many were run.
+        best_iteration: whose weights were kept.
+        best_score: their validation score.
+        history: [(iteration, loss since the last validation, score)].
+    """
+
+    iterations: int
+    best_iteration: int
+    best_score: float
+    history: list[tuple[int, float, float]]
+
+
+def run_stage(
+    settings: StageSettings,
+    modules: dict[str, nn.Module],
+    loss_at: Callable[[int], Tensor],
+    validate: Callable[[], Validation],
+    folder: Path,
+    log: Log,
+    tick: Callable[[int, int, str], None],
+) -> StageResult:
+    """Train `modules` in place and leave the best-by-validation weights in them.
+
+    Interrupted anywhere, calling it again with the same arguments goes on from the last checkpoint
+    and ends with the same weights, byte for byte.
+
+    Args:
+        settings: see StageSettings.
+        modules: name -> module whose parameters are trained.
+        loss_at: iteration -> loss; all it draws must come from a stream named by the iteration, and
+            it may call backward itself on parts and return a detached total (see `accumulate`).
+        validate: scores the current weights.
+        folder: holds the stage's checkpoint and best weights.
+        log: receives losses, scores and learning rate.
+        tick: (done, total, note) after each iteration.
+    """
+    if settings.iterations == 0:
+        return StageResult(0, 0, math.nan, [])
+    parameters = [p for m in modules.values() for p in m.parameters() if p.requires_grad]
+    optimiser = torch.optim.Adam(parameters, lr=settings.learning_rate)
+    checkpoint, best_path = folder / f"{settings.name}.safetensors", folder / f"{settings.name}-best.safetensors"
+    first, history, best_at, best = 0, [], 0, math.inf
+    if checkpoint.exists():
+        tensors, facts = load_tensors(checkpoint)
+        unpack(tensors, modules, optimiser)
+        first, best_at, best = facts["iteration"], facts["best_iteration"], facts["best_score"]
+        history = [tuple(row) for row in facts["history"]]
+    else:
+        best = validate().score
+        save_tensors(best_path, pack(modules, None), {"iteration": 0})
+    total, since = 0.0, 0
+    for iteration in range(first, settings.iterations):
+        if _stale(history, best_at, settings):
+            break
+        for group in optimiser.param_groups:
+            group["lr"] = settings.rate(iteration)
+        optimiser.zero_grad(set_to_none=True)
+        loss = loss_at(iteration)
+        if loss.requires_grad:
+            loss.backward()
+        nn.utils.clip_grad_norm_(parameters, settings.clip)
+        optimiser.step()
+        total, since = total + float(loss.detach()), since + 1
+        done = iteration + 1
+        if done % settings.validate_every == 0 or done == settings.iterations:
+            result = validate()
+            history.append((done, total / since, result.score))
+            if result.score < best:
+                best, best_at = result.score, done
+                save_tensors(best_path, pack(modules, None), {"iteration": done})
+            _record(log, settings, iteration, total / since, result)
+            facts = {"iteration": done, "best_iteration": best_at, "best_score": best, "history": history}
+            save_tensors(checkpoint, pack(modules, optimiser), facts)
+            total, since = 0.0, 0
+        tick(done, settings.iterations, f"{settings.name}: validation {best:.3f} at {best_at}")
+    unpack(load_tensors(best_path)[0], modules, None)
+    return StageResult(history[-1][0] if history else 0, best_at, best, history)
+
+
+def _stale(history: list, best_at: int, settings: StageSettings) -> bool:
+    """Whether `patience` validations have passed without a better one."""
+    return bool(history) and history[-1][0] - best_at >= settings.patience * settings.validate_every
+
+
+def _record(log: Log, settings: StageSettings, iteration: int, loss: float, result: Validation) -> None:
+    log(f"{settings.name}/loss", loss, iteration)
+    log(f"{settings.name}/validation", result.score, iteration)
+    log(f"{settings.name}/learning_rate", settings.rate(iteration), iteration)
+    for key, value in result.curves.items():
+        log(f"{settings.name}/{key}", value, iteration)
