@@ -19,7 +19,7 @@ ARROWS: dict[str, set[str]] = {
     "drives": {"core"},
     "runtime": {"core"},
     "render": {"plan"},
-    "observe": {"render", "drives"},
+    "observe": {"render"},
     "filtering": {"observe", "drives"},
     "movers": {"filtering"},
     "training": {"movers", "filtering"},

@@ -4,18 +4,21 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from typing import NamedTuple
 
 import numpy as np
 import torch
 
+from learnfilter.app.build import build_strip
+from learnfilter.app.config import MotionConfig, TrainConfig
 from learnfilter.core.poses import between, compose
 from learnfilter.core.seeds import stream
-from learnfilter.core.strip import RingLayout, Strip
+from learnfilter.core.strip import RingLayout, Strip, lay_on_ring
 from learnfilter.drives.drive import Drive
 from learnfilter.filtering.course import Truth, course_of, truth_of
+from learnfilter.filtering.motion import MotionSettings
 from learnfilter.filtering.rollout import lay_strips
 from learnfilter.observe.contract import Strips
-from learnfilter.observe.fitting import sensor_poses
 from learnfilter.plan.floorplan import FloorPlan
 from learnfilter.render import grid_for, render_site
 from learnfilter.render.site import Site
@@ -65,6 +68,31 @@ class Lattices:
         return Ground(site, tuple(course_of(d, site, self.after_m, self.after_rad) for d in drives), stills)
 
 
+def build_motion(settings: MotionConfig) -> MotionSettings:
+    """Spreads of odometry that tuning starts from."""
+    return MotionSettings(
+        settings.turn_from_turn,
+        settings.turn_from_travel,
+        settings.travel_from_travel,
+        settings.travel_from_turn,
+    )
+
+
+def build_lattices(settings: TrainConfig) -> Lattices:
+    """How plans are laid on lattices for the sensor."""
+    grid, motion = settings.grid, settings.motion
+    return Lattices(
+        lay_on_ring(build_strip(settings.strip), grid.headings, grid.bearings_per_heading),
+        grid.cell_m,
+        grid.headings,
+        grid.robot_radius_m,
+        settings.strip.max_range_m,
+        grid.windows,
+        motion.weigh_after_m,
+        motion.weigh_after_rad,
+    )
+
+
 @dataclass(frozen=True)
 class Rehearsal:
     """What to make up.
@@ -88,6 +116,14 @@ class Rehearsal:
     conditions: Conditions
 
 
+class Invented(NamedTuple):
+    """Invented sites ready for filters, with the plans and drives they were made from."""
+
+    grounds: tuple[Ground, ...]
+    plans: tuple[FloorPlan, ...]
+    drives: tuple[tuple[Drive, ...], ...]
+
+
 STILLS_A_DAY = 64  # one furnishing serves so many strips: fewer costs set-up, more repeats furniture
 
 
@@ -103,7 +139,7 @@ def make_stills(
         robot = free_poses(world, rng, min(STILLS_A_DAY, count - day * STILLS_A_DAY))
         drive = _as_drive(world, robot, strip, rng)
         parts.append(lay_strips(drive, site.layout, np.arange(len(drive))))
-        poses.append(sensor_poses(drive))
+        poses.append(drive.sensor_reference())
     strips = Strips(
         torch.cat([part.depth_m for part in parts]), torch.cat([part.rgb for part in parts]), parts[0].present
     )
@@ -126,9 +162,9 @@ def make_grounds(
     seed: int,
     purpose: str,
     tick: Callable[[int, int, str], None],
-) -> tuple[Ground, ...]:
+) -> Invented:
     """Invent sites and drive on them; `purpose` (train, validation, test) keeps their seeds apart."""
-    grounds = []
+    grounds, plans, all_drives = [], [], []
     base = int(stream(seed, "grounds", purpose).integers(2**31))
     for number in range(rehearsal.sites):
         family = rehearsal.families[number % len(rehearsal.families)]
@@ -143,14 +179,23 @@ def make_grounds(
                 plan, site, strip, rehearsal.conditions, rehearsal.stills, base, lattices.robot_radius_m
             )
         grounds.append(lattices.ground(site, drives, stills))
-        tick(number + 1, rehearsal.sites, f"{purpose} sites")
-    return tuple(grounds)
+        plans.append(plan)
+        all_drives.append(drives)
+        tick(number + 1, rehearsal.sites, "")
+    return Invented(tuple(grounds), tuple(plans), tuple(all_drives))
 
 
 def drives_on(
-    plan: FloorPlan, strip: Strip, conditions: Conditions, drives: int, rows: int, seed: int, radius_m: float
+    plan: FloorPlan,
+    strip: Strip,
+    conditions: Conditions,
+    drives: int,
+    rows: int,
+    seed: int,
+    radius_m: float,
+    tick: Callable[[int, int, str], None],
 ) -> tuple[Drive, ...]:
-    """Simulated drives on a plan of the user's."""
+    """Simulated drives on a plan of the user's, each on another day."""
     made = []
     for day in range(drives):
         world = build_world(
@@ -158,4 +203,5 @@ def drives_on(
         )
         rng = stream(seed, "drives on", day, "drive")
         made.append(rehearse(world, strip, rng, rows, f"{plan.name}-{day}"))
+        tick(day + 1, drives, "")
     return tuple(made)

@@ -11,7 +11,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
 
 from learnfilter.core.errors import ConfigError
 
@@ -138,3 +138,32 @@ def _phase(angles: NDArray[np.float64], step: float) -> float:
     phase = (np.angle(mean) / (2 * np.pi) * step) % step
     # rounding may return a whole step, which is phase zero one bearing further on
     return 0.0 if step - phase < 1e-9 * step else phase
+
+
+EDGE = 1e-6  # of a sub-cell: an end on an edge belongs to the sub-cell above it, whatever the last bits say
+
+
+def end_offsets(
+    range_m: ArrayLike, angle_rad: ArrayLike, cell_m: float, scale: int
+) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    """Sub-cell in which columns end, counted from the lower left sub-cell of the sensor's cell.
+
+    The sensor stands at the cell's centre, so the answer is the same for every cell.  With an even scale
+    that centre is a corner of sub-cells and an axis-aligned column runs along an edge: hence EDGE, and
+    hence this one place for whoever counts end points.
+
+    Args:
+        range_m: metres along each column.
+        angle_rad: site angle of each column, broadcast against the ranges.
+        cell_m: side of a cell.
+        scale: sub-cells a cell side.
+
+    Returns:
+        Rows and columns, shaped as the arguments broadcast.
+    """
+    reach = np.asarray(range_m, dtype=float) * (scale / cell_m)
+    rows, columns = reach * np.sin(angle_rad), reach * np.cos(angle_rad)
+    return (
+        np.floor(rows + (scale / 2 + EDGE)).astype(np.int64),
+        np.floor(columns + (scale / 2 + EDGE)).astype(np.int64),
+    )

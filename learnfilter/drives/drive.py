@@ -7,6 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from learnfilter.core.errors import DriveError
+from learnfilter.core.poses import compose
 from learnfilter.core.shapes import check
 from learnfilter.core.strip import Strip
 
@@ -47,3 +49,13 @@ class Drive:
 
     def __len__(self) -> int:
         return len(self.time_s)
+
+    def sensor_reference(self) -> NDArray[np.float64]:
+        """[t 3] reference pose of the sensor, NaN where unknown.
+
+        Raises:
+            DriveError: the drive has no reference poses at all.
+        """
+        if self.reference is None:
+            raise DriveError("no reference poses", file=self.name, expected="x_m, y_m, heading_rad")
+        return compose(self.reference, np.asarray(self.strip.mount))

@@ -12,15 +12,13 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from learnfilter.core.lock import Lock
 from learnfilter.core.poses import wrap
 from learnfilter.core.shapes import check
 
 # Located: good enough for a planner to take over from here (design.md, section 2).
 WITHIN_M = 0.5
 WITHIN_RAD = np.radians(15.0)
-# Lock: one strip may flatter a wrong mode, three running after movement seldom do.
-LOCK_MASS = 0.9
-LOCK_STRIPS = 3
 
 Floats = NDArray[np.floating]
 
@@ -55,29 +53,6 @@ def circular_mean(angles: ArrayLike, weights: ArrayLike | None = None, axis: int
     """
     turns = np.exp(1j * np.asarray(angles, dtype=float))
     return wrap(np.angle(np.sum(turns if weights is None else weights * turns, axis=axis)))
-
-
-@dataclass(frozen=True)
-class Lock:
-    """Decides, strip by strip and without looking ahead, whether the robot may trust its pose.
-
-    Attributes:
-        running: weighed strips in a row, up to the last, with enough mass near the best mode.
-    """
-
-    running: int = 0
-
-    @property
-    def held(self) -> bool:
-        return self.running >= LOCK_STRIPS
-
-    def after(self, mass_near_mode: float) -> Lock:
-        """The state after one more weighed strip.
-
-        Args:
-            mass_near_mode: belief within 0.5 m and 15 degrees of the best mode's mean, in [0, 1].
-        """
-        return Lock(self.running + 1 if mass_near_mode >= LOCK_MASS else 0)
 
 
 def first_lock(mass_near_mode: ArrayLike) -> int | None:

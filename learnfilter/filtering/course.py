@@ -12,7 +12,8 @@ from torch import Tensor
 from learnfilter.core.errors import DriveError
 from learnfilter.drives.drive import Drive
 from learnfilter.filtering.rollout import Steps, weighed_steps
-from learnfilter.observe.fitting import nearest_live, sensor_poses
+from learnfilter.observe.contract import Strips
+from learnfilter.observe.fitting import Sample
 from learnfilter.render.site import Site
 
 
@@ -40,13 +41,15 @@ class Course(NamedTuple):
     truth: Truth
     poses: NDArray[np.float64]
 
-    def __len__(self) -> int:
+    @property
+    def length(self) -> int:
+        """Number of weighed strips."""
         return len(self.steps.rows)
 
 
 def truth_of(site: Site, poses: NDArray[np.float64]) -> Truth:
     """Lattice poses of sensor poses [s 3]."""
-    cell, heading, own = nearest_live(site, poses)
+    cell, heading, own = site.nearest_live(poses)
     return Truth(torch.from_numpy(cell), torch.from_numpy(heading), own)
 
 
@@ -57,10 +60,15 @@ def course_of(drive: Drive, site: Site, after_m: float, after_rad: float) -> Cou
         DriveError: a weighed strip has no reference pose.
     """
     steps = weighed_steps(drive, site.layout, after_m, after_rad)
-    poses = sensor_poses(drive)[steps.rows]
+    poses = drive.sensor_reference()[steps.rows]
     if not np.isfinite(poses).all():
         row = int(steps.rows[np.flatnonzero(~np.isfinite(poses).all(axis=1))[0]])
         raise DriveError(
             "no reference pose", file=drive.name, place=f"row {row}", expected="finite x, y, heading"
         )
     return Course(drive.name, steps, truth_of(site, poses), poses)
+
+
+def sample_of(site: Site, strips: Strips, truth: Truth) -> Sample:
+    """Strips with their lattice poses, for fitting."""
+    return Sample(site, strips.depth_m.numpy(), strips.rgb.numpy(), truth.cell.numpy(), truth.heading.numpy())

@@ -61,7 +61,7 @@ def trace(
     """
     features = model.read(site) if features is None else features
     lattice = lattice_of(site)
-    count = len(course) if steps is None else min(steps, len(course))
+    count = course.length if steps is None else min(steps, course.length)
     flat, heading = lattice.cells[course.truth.cell], course.truth.heading
     columns: list[tuple] = []
     planes = []

@@ -16,11 +16,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.optimize import minimize_scalar
 
-from learnfilter.core.colour import srgb_to_linear
-from learnfilter.core.errors import DriveError
-from learnfilter.core.poses import compose
 from learnfilter.core.scale import RangeScale
-from learnfilter.drives.drive import Drive
 from learnfilter.observe.mixture import RangeMixture, component_masses
 from learnfilter.render.site import Site
 
@@ -43,49 +39,38 @@ class Pairs(NamedTuple):
     strip: NDArray[np.int64]
 
 
-def nearest_live(site: Site, poses: NDArray[np.float64]) -> tuple[NDArray, NDArray, NDArray]:
-    """Live cell number, heading bin and whether the pose's own cell was live, for sensor poses [t 3]."""
-    row, column = site.grid.cell_of(poses[:, 0], poses[:, 1])
-    inside = (row >= 0) & (row < site.grid.rows) & (column >= 0) & (column < site.grid.columns)
-    cell = np.where(inside, site.index_of()[row.clip(0, site.grid.rows - 1), column.clip(0, site.grid.columns - 1)], -1)
-    for i in np.flatnonzero(cell < 0):
-        cell[i] = np.argmin(((site.cells - [row[i], column[i]]) ** 2).sum(axis=1))
-    own = inside & (np.abs(site.cells[cell] - np.stack([row, column], 1)).max(axis=1) == 0)
-    return cell, site.grid.heading_of(poses[:, 2]), own
+class Sample(NamedTuple):
+    """Strips on one site with the lattice poses they were taken at.
+
+    Attributes:
+        site: rendered plan.
+        depth_m: [t w], rgb: [t w 3] linear: strips laid on the ring, NaN where there is nothing.
+        cell: [t] live cell number.
+        heading: [t] heading bin.
+    """
+
+    site: Site
+    depth_m: NDArray
+    rgb: NDArray
+    cell: NDArray[np.int64]
+    heading: NDArray[np.int64]
 
 
-def sensor_poses(drive: Drive) -> NDArray[np.float64]:
-    """[t 3] reference pose of the sensor; NaN where unknown."""
-    if drive.reference is None:
-        raise DriveError("the drive has no reference poses", file=drive.name, expected="x_m, y_m, heading_rad")
-    return compose(drive.reference, np.asarray(drive.strip.mount))
-
-
-def gather_pairs(drives: Iterable[tuple[Drive, Site]]) -> Pairs:
-    """All usable columns of all drives at their reference poses."""
+def gather_pairs(samples: Iterable[Sample]) -> Pairs:
+    """All columns with a raw column behind them and a sure ray before them, of all samples."""
     parts, strips = [], 0
-    for drive, site in drives:
-        poses = sensor_poses(drive)
-        known = np.flatnonzero(np.isfinite(poses).all(axis=1))
-        cell, heading, _ = nearest_live(site, poses[known])
+    for site, depth_m, rgb, cell, heading in samples:
         layout = site.layout
         places = np.flatnonzero(layout.present())
         bearing = (heading[:, None] * layout.bearings_per_heading + layout.first + places) % layout.bearings
-        sure = ~site.unsure[cell[:, None], bearing]
-        finish, known_finish = site.colour()
-        finish_rgb = np.where(
-            known_finish[cell[:, None], bearing][..., None], finish[cell[:, None], bearing], np.nan
-        )
-        depth = layout.lay(drive.depth_m[known])[:, places]
-        if drive.rgb is None:
-            rgb = np.full((*depth.shape, 3), np.nan)
-        else:
-            rgb = layout.lay(srgb_to_linear(drive.rgb[known]), axis=1)[:, places]
-        number = np.broadcast_to(strips + np.arange(len(known))[:, None], depth.shape)
-        strips += len(known)
-        parts.append(
-            (depth[sure], site.range_m[cell[:, None], bearing][sure], rgb[sure], finish_rgb[sure], number[sure])
-        )
+        colour, known = site.colour()
+        ray = cell[:, None], bearing
+        sure = ~site.unsure[ray]
+        finish_rgb = np.where(known[ray][..., None], colour[ray], np.nan)
+        number = np.broadcast_to(strips + np.arange(len(cell))[:, None], sure.shape)
+        strips += len(cell)
+        columns = (depth_m[:, places], site.range_m[ray], rgb[:, places], finish_rgb, number)
+        parts.append(tuple(column[sure] for column in columns))
     return Pairs(*(np.concatenate(column) for column in zip(*parts, strict=True)))
 
 

@@ -40,37 +40,26 @@ def sum_along_rings(table, ring, first, per_heading, headings):
 
 
 @numba.njit(cache=True, parallel=True, fastmath=True)
-def sum_at_end_points(ranges, bearings, table, field, cell_x, cell_y, headings, sub_m):
-    """out[b, n, h] = sum over w of table[distance class at the end point of column w].
+def sum_at_end_points(end_row, end_column, used, table, field, cell_row, cell_column):
+    """out[b, n, h] = sum over used w of table[distance class where column w ends].
 
     Args:
-        ranges: [b w] metres, NaN or negative where the column gives no evidence.
-        bearings: [w] sensor-frame bearing, radians.
+        end_row, end_column: [b h w] sub-cell of each end point, from `core.strip.end_offsets`.
+        used: [b w] whether the column gives evidence.
         table: [d] evidence of each distance class; the last serves everything off the field.
         field: [rows columns] integer distance class of each sub-cell.
-        cell_x, cell_y: [n] cell centres measured from the field's lower left corner, metres.
-        headings: [h] radians.
-        sub_m: side of a sub-cell, metres.
+        cell_row, cell_column: [n] lower left sub-cell of each cell.
     """
-    strips, columns = ranges.shape
+    strips, headings, columns = end_row.shape
     rows, width = field.shape
-    out = np.zeros((strips, len(cell_x), len(headings)), np.float32)
-    for b in range(strips):
-        dx = np.empty((len(headings), columns), np.float32)
-        dy = np.empty((len(headings), columns), np.float32)
-        used = np.empty(columns, np.bool_)
-        for w in range(columns):
-            used[w] = ranges[b, w] >= 0
-            for h in range(len(headings)):
-                dx[h, w] = ranges[b, w] * np.cos(headings[h] + bearings[w]) if used[w] else 0.0
-                dy[h, w] = ranges[b, w] * np.sin(headings[h] + bearings[w]) if used[w] else 0.0
-        for n in numba.prange(len(cell_x)):
-            for h in range(len(headings)):
+    out = np.zeros((strips, len(cell_row), headings), np.float32)
+    for n in numba.prange(len(cell_row)):
+        for b in range(strips):
+            for h in range(headings):
                 total = np.float32(0)
                 for w in range(columns):
-                    if used[w]:
-                        column = int(np.floor((cell_x[n] + dx[h, w]) / sub_m))
-                        row = int(np.floor((cell_y[n] + dy[h, w]) / sub_m))
+                    if used[b, w]:
+                        row, column = cell_row[n] + end_row[b, h, w], cell_column[n] + end_column[b, h, w]
                         if 0 <= row < rows and 0 <= column < width:
                             total += table[field[row, column]]
                         else:

@@ -60,3 +60,16 @@ class Site:
         """Linear RGB [n p 3] (zero where unknown) and whether it is known [n p]."""
         palette = np.vstack([self.palette, np.zeros((1, 3), np.float32)])
         return palette[self.finish], self.finish >= 0
+
+    def nearest_live(
+        self, poses: NDArray[np.float64]
+    ) -> tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.bool_]]:
+        """Live cell number and heading bin that stand for sensor poses [t 3], and whether the pose's own
+        cell is live (else the nearest live one was taken)."""
+        row, column = self.grid.cell_of(poses[:, 0], poses[:, 1])
+        r, c = row.clip(0, self.grid.rows - 1), column.clip(0, self.grid.columns - 1)
+        cell = np.where((r == row) & (c == column), self.index_of()[r, c], -1).astype(np.int64)
+        own = cell >= 0
+        for i in np.flatnonzero(~own):
+            cell[i] = np.argmin(((self.cells - [row[i], column[i]]) ** 2).sum(axis=1))
+        return cell, self.grid.heading_of(poses[:, 2]), own

@@ -113,23 +113,26 @@ class _Goals:
         parts = self._floor.components()
         part = parts[self._floor.node(*pose[:2])]
         self._row, self._column = np.nonzero(parts == part)
-        self._place = self._floor.place(self._row, self._column)
-        self._seen = np.zeros(len(self._place), bool)
+        self._x, self._y = self._floor.place(self._row, self._column).T.copy()
+        self._seen = np.zeros(len(self._x), bool)
         self.choose(pose)
 
     def choose(self, pose: NDArray[np.float64]) -> None:
         """Draw a goal; the chance grows with its distance and falls where it was seen."""
-        far = np.hypot(*(self._place - pose[:2]).T) + 1e-3
+        far = np.sqrt(self._squared_distance(pose)) + 1e-3
         weight = np.cumsum(far * np.where(self._seen, SEEN_WEIGHT, 1.0))
         chosen = np.searchsorted(weight, self._rng.random() * weight[-1])
-        self._goal = self._place[chosen]
+        self._goal = np.array([self._x[chosen], self._y[chosen]])
         self.lengths = way_lengths(self._floor.cost, self._row[chosen], self._column[chosen])
 
     def visit(self, pose: NDArray[np.float64]) -> None:
         """Note what is near as seen; take a new goal where this one is reached."""
-        self._seen |= np.hypot(*(self._place - pose[:2]).T) < SEEN_M
+        self._seen |= self._squared_distance(pose) < SEEN_M**2
         if np.hypot(*(self._goal - pose[:2])) < ARRIVED_M:
             self.choose(pose)
+
+    def _squared_distance(self, pose: NDArray[np.float64]) -> NDArray[np.float64]:
+        return (self._x - pose[0]) ** 2 + (self._y - pose[1]) ** 2
 
 
 @njit(cache=True)

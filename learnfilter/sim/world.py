@@ -4,10 +4,12 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
 
+from learnfilter.core.grid import PoseGrid
 from learnfilter.plan.floorplan import DOOR, NO_FINISH, OPEN, SHUT, SOLID, UNKNOWN, WALL, WINDOW, FloorPlan
 from learnfilter.render.live import grid_for, live_cells
 from learnfilter.sim.clutter import People, draw_people, furnish, outline_edges
@@ -119,10 +121,15 @@ def _scale(plan: FloorPlan, points: NDArray[np.float64], factor: float) -> NDArr
     return middle + factor * (points - middle)
 
 
+@lru_cache(maxsize=8)  # every day on a plan asks for the same floor, and flooding a large one is slow
+def _live_floor(plan: FloorPlan, radius_m: float) -> tuple[PoseGrid, NDArray[np.bool_]]:
+    grid = grid_for(plan, 1, CELL_M)
+    return grid, live_cells(plan, grid, radius_m)
+
+
 def _live_nodes(plan: FloorPlan, space: FreeSpace, plan_scale: float, radius_m: float) -> NDArray[np.bool_]:
     """[rows columns] nodes that lie on the plan's live floor, which is where a filter looks."""
-    grid = grid_for(plan, 1, CELL_M)
-    live = live_cells(plan, grid, radius_m)
+    grid, live = _live_floor(plan, radius_m)
     nodes = space.place(*np.indices(space.cost.shape))
     x, y = np.moveaxis(_scale(plan, nodes.reshape(-1, 2), plan_scale).reshape(nodes.shape), -1, 0)
     row, column = grid.cell_of(x, y)

@@ -9,6 +9,7 @@ from pathlib import Path
 from typing import NamedTuple, Protocol
 
 import torch
+from numpy.typing import NDArray
 from torch import Tensor, nn
 
 from learnfilter.training.checkpoint import load_tensors, pack, save_tensors, unpack
@@ -43,16 +44,24 @@ class StageSettings:
 
 
 class Validation(NamedTuple):
-    """score: lower is better; curves: further numbers to log."""
+    """How good the current weights are.
+
+    Attributes:
+        score: lower is better.
+        curves: further numbers to log.
+        picture: [r c] a belief to look at, or None.
+    """
 
     score: float
     curves: dict[str, float]
+    picture: NDArray | None = None
 
 
 class Log(Protocol):
-    """Where numbers of a run go: scalar(tag, value, iteration)."""
+    """Where numbers and beliefs of a run go."""
 
-    def __call__(self, tag: str, value: float, iteration: int) -> None: ...
+    def scalar(self, tag: str, value: float, iteration: int) -> None: ...
+    def belief(self, tag: str, plane: NDArray, iteration: int) -> None: ...
 
 
 class StageResult(NamedTuple):
@@ -144,8 +153,8 @@ def _stale(history: list, best_at: int, settings: StageSettings) -> bool:
 
 
 def _record(log: Log, settings: StageSettings, iteration: int, loss: float, result: Validation) -> None:
-    log(f"{settings.name}/loss", loss, iteration)
-    log(f"{settings.name}/validation", result.score, iteration)
-    log(f"{settings.name}/learning_rate", settings.rate(iteration), iteration)
-    for key, value in result.curves.items():
-        log(f"{settings.name}/{key}", value, iteration)
+    numbers = {"loss": loss, "validation": result.score, "learning_rate": settings.rate(iteration)}
+    for key, value in (numbers | result.curves).items():
+        log.scalar(f"{settings.name}/{key}", value, iteration)
+    if result.picture is not None:
+        log.belief(f"{settings.name}/belief", result.picture, iteration)

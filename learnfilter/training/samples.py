@@ -37,8 +37,8 @@ def stretch(
     Returns:
         odometry [s b 3] (the first not applied), strips [s*b ...] step-major, cell [s b], heading [s b].
     """
-    length = min(length, *map(len, courses))
-    begins = [int(rng.integers(0, len(course) - length + 1)) for course in courses]
+    length = min(length, *(course.length for course in courses))
+    begins = [int(rng.integers(0, course.length - length + 1)) for course in courses]
     pairs = [(course, slice(begin, begin + length)) for course, begin in zip(courses, begins, strict=True)]
     odometry = torch.stack([course.steps.odometry[part] for course, part in pairs], 1)
     depth = torch.stack([course.steps.strips.depth_m[part] for course, part in pairs], 1)

@@ -52,6 +52,13 @@ def test_the_number_of_things_has_the_mean_asked_for():
     assert abs(np.mean(counts) - 4 * 1.6) < 4 * np.sqrt(variance / 200)
 
 
+def test_no_thing_stands_beyond_a_wall():
+    """Chairs round a place 0.3 m from a wall stay on its side."""
+    wall = np.array([[0.3, -5.0, 0.3, 5.0]])
+    outlines, _ = furnish(np.zeros((1, 2)), wall, np.empty((0, 4)), 60.0, np.random.default_rng(0))
+    assert max(outline[:, 0].max() for outline in outlines) < 0.3
+
+
 def test_an_empty_site_stays_empty():
     """No furniture and no people where none is asked for."""
     world = world_of(room(5, 5), EMPTY)

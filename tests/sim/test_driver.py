@@ -66,6 +66,8 @@ def test_places_are_uniform_over_the_floor():
     poses = free_poses(world_of(room(5, 4)), np.random.default_rng(0), 1500)
     for values, low, high in zip(poses.T, (0.25, 0.25, -np.pi), (4.75, 3.75, np.pi), strict=True):
         assert stats.kstest(values, stats.uniform(low, high - low).cdf).pvalue > 1e-3
+    within_a_cell = 10 * poses[:, :2] % 1  # nothing prefers the lattice's nodes, 0.1 m apart
+    assert stats.kstest(within_a_cell.ravel(), "uniform").pvalue > 1e-3
 
 
 def test_a_drive_starts_where_a_free_pose_may_be():

@@ -4,13 +4,15 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from invented import EMPTY, room, world_of
+import shapely
+from invented import EMPTY, NO_FAULTS, room, world_of
 
 from learnfilter.core.errors import ConfigError
+from learnfilter.core.strip import Strip
 from learnfilter.plan import read_plan
 from learnfilter.plan.floorplan import DOOR, OPEN, SHUT, UNKNOWN, WALL, WINDOW
 from learnfilter.render.live import grid_for, live_cells
-from learnfilter.sim import Conditions, build_world, free_poses, make_plan
+from learnfilter.sim import Conditions, build_world, free_poses, make_plan, sense
 
 N = 400
 # Short lines, close together in a corner of a room: many draws from one world.
@@ -96,6 +98,23 @@ def test_changing_one_condition_leaves_furniture_and_people_alone(change):
     usual, changed = (world_of(plan, c) for c in (Conditions(), replace(Conditions(), **change)))
     np.testing.assert_array_equal(usual.truth.segments, changed.truth.segments)
     np.testing.assert_array_equal(usual.people.ends, changed.people.ends)
+
+
+def test_nothing_starts_behind_a_door_drawn_shut():
+    """A closet the plan shuts is free floor, and not the robot's."""
+    plan = room(6, 4, extra=[[4, 0, 4, 1], [4, 2, 4, 4]], doors=[([4, 1, 4, 2], SHUT)])
+    assert free_poses(world_of(plan), np.random.default_rng(0), 100)[:, 0].max() < 4
+
+
+def test_area_the_plan_does_not_know_is_solid():
+    """A square of unmapped area: nobody starts within the robot's radius of it, and rays end there."""
+    square = np.array([[2.0, 1.0], [4, 1], [4, 3], [2, 3]])
+    world = world_of(replace(room(6, 4), unmapped=(square,)))
+    places = shapely.points(free_poses(world, np.random.default_rng(0), 200)[:, :2])
+    assert shapely.distance(shapely.Polygon(square), places).min() >= 0.25 - 1e-9
+    strip = Strip((0.0,), 0.1, 8.0)
+    depth, _ = sense(world, np.array([[1.0, 2, 0]]), np.zeros(1), strip, np.random.default_rng(0), NO_FAULTS)
+    np.testing.assert_allclose(depth, [[1.0]], atol=1e-5)  # float32
 
 
 def test_starts_lie_on_live_floor():

@@ -7,6 +7,11 @@ Adding one takes a module, a line in VERBS, its settings in app/config.py and co
 
 from __future__ import annotations
 
-from learnfilter.app.config import Common, PlanConfig, RehearseConfig
+from learnfilter.app.config import AblateConfig, Common, PlanConfig, RehearseConfig, TrainConfig
 
-VERBS: dict[str, type[Common]] = {"plan": PlanConfig, "rehearse": RehearseConfig}
+VERBS: dict[str, type[Common]] = {
+    "plan": PlanConfig,
+    "rehearse": RehearseConfig,
+    "train": TrainConfig,
+    "ablate": AblateConfig,
+}

@@ -37,8 +37,6 @@ def draw(sketch: Sketch, width: int, depth: int) -> None:
 
 def _row(sketch: Sketch, left: int, right: int, bottom: int, top: int, finishes: tuple[int, int]) -> None:
     """Racks end to end, some missing, a passage across where the row is long."""
-    if right - left < RACK_LENGTH_DM[0]:
-        return
     cuts = sketch.split(right - left, *RACK_LENGTH_DM)
     passage = sketch.between(1, len(cuts) - 2) if len(cuts) > 3 else None
     for i, (a, b) in enumerate(pairwise(cuts)):

@@ -1,0 +1,1 @@
+"""Does the learned model win: contenders, statistics, verdict."""

@@ -1,0 +1,93 @@
+"""The models of a training run on disk: one tensor file a model, all an evaluation needs beside it."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Any, NamedTuple
+
+from omegaconf import OmegaConf
+
+from learnfilter.ablation.study import Contender
+from learnfilter.app.config import TrainConfig, typed
+from learnfilter.core.errors import ConfigError
+from learnfilter.core.strip import RingLayout
+from learnfilter.filtering.motion import MotionModel
+from learnfilter.observe.contract import ObservationModel
+from learnfilter.observe.describe import describe, rebuild
+from learnfilter.training.checkpoint import load_tensors, save_tensors
+from learnfilter.training.recipe import Trained
+
+LEARNED = "matcher"
+
+
+class Stored(NamedTuple):
+    """A model of a training run.
+
+    Attributes:
+        name: 'matcher' or the kind of analytic blend.
+        model, motion: the filter.
+        facts: validation score, stages, floor, seed.
+    """
+
+    name: str
+    model: ObservationModel
+    motion: MotionModel
+    facts: dict[str, Any]
+
+    @property
+    def learned(self) -> bool:
+        return self.name == LEARNED
+
+    def contender(self, hide_colour: bool = False) -> Contender:
+        """As it enters a study."""
+        name = f"{self.name}, colour hidden" if hide_colour else self.name
+        return Contender(name, self.model, self.motion, self.facts["floor"], self.learned, hide_colour)
+
+
+def store(folder: Path, name: str, trained: Trained, facts: dict[str, Any]) -> Stored:
+    """Write a trained model; returns it as it will be read."""
+    described, tensors = describe(trained.model)
+    stages = {
+        key: {"iterations": s.iterations, "best_iteration": s.best_iteration, "score": s.best_score, "history": s.history}
+        for key, s in trained.stages.items()
+        if s.iterations
+    }
+    whole = {"name": name, "model": described, "stages": stages, **facts}
+    whole["validation"] = min((s["score"] for s in stages.values()), default=None)
+    motion = {f"motion.{key}": value for key, value in trained.motion.state_dict().items()}
+    model = {f"model.{key}": value for key, value in tensors.items()}
+    save_tensors(folder / f"{name}.safetensors", model | motion, whole)
+    return Stored(name, trained.model, trained.motion, whole)
+
+
+def stored(folder: Path, layout: RingLayout) -> dict[str, Stored]:
+    """All models of a training run, by name.
+
+    Raises:
+        ConfigError: there are none.
+        InputError: a file is damaged or newer than this program.
+    """
+    found = {}
+    for path in sorted(folder.glob("*.safetensors")):
+        tensors, facts = load_tensors(path)
+        own = {k.removeprefix("model."): v for k, v in tensors.items() if k.startswith("model.")}
+        motion = MotionModel()
+        motion.load_state_dict({k.removeprefix("motion."): v for k, v in tensors.items() if k.startswith("motion.")})
+        found[facts["name"]] = Stored(facts["name"], rebuild(layout, facts["model"], own), motion, facts)
+    if not found:
+        raise ConfigError("no trained models here", file=folder, place="model", expected="a run of `learnfilter train`")
+    return found
+
+
+def settings_of(run: Path) -> TrainConfig:
+    """The settings a training run was made with: sensor, lattice and motion of its models.
+
+    Raises:
+        ConfigError: no such run, or its settings cannot be read.
+    """
+    record = run / "config.yaml"
+    if not record.is_file():
+        raise ConfigError("no training run here", file=run, place="model", expected="a folder with config.yaml")
+    composed = OmegaConf.load(record)
+    known = {key: composed[key] for key in TrainConfig.__dataclass_fields__ if key in composed}
+    return typed(OmegaConf.create(known), TrainConfig)

@@ -1,0 +1,65 @@
+"""Train an observation model for your sensor, and tune its analytic opponents.
+
+Invents sites (`site.families`) under `condition`, drives on them with your `strip`, then: fits and tunes
+the analytic models through the filter; trains the matcher, born from the best of them, on single strips
+(`train.matching`) and through the filter (`train.filtering`). The weights that do best on held-out sites
+are kept. Watch it: tensorboard --logdir runs/train. A killed run is taken up again by the same command
+and ends with the same weights.
+
+Example:
+  learnfilter train name=cart strip=depth-colour-90 seed=1
+"""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Any
+
+from learnfilter.app.config import TrainConfig, hold
+from learnfilter.app.models import LEARNED
+from learnfilter.app.pages import provenance, settings_text, training_charts
+from learnfilter.app.runs import open_run
+from learnfilter.app.training import train_models
+from learnfilter.report import Column, RunPage, Table, write_page
+from learnfilter.sim import FAMILIES
+
+
+def check_families(settings: TrainConfig) -> None:
+    """Refuse families nobody makes.
+
+    Raises:
+        ConfigError: none, or unknown ones.
+    """
+    families = settings.site.families
+    known = bool(families) and set(families) <= FAMILIES.keys()
+    hold("site.families", known, f"some of {', '.join(FAMILIES)}", families)
+
+
+def run(settings: TrainConfig) -> dict[str, Any]:
+    """Do the verb; returns the summary."""
+    check_families(settings)
+    folder = open_run("train", settings.name or "default", settings)
+    models = train_models(settings, folder.path)
+    validation = {name: model.facts["validation"] for name, model in models.items()}
+    write_page(
+        RunPage(
+            title=folder.path.name,
+            verb="train",
+            headline=f"Nats of the true pose on held-out sites: {LEARNED} {validation[LEARNED]:.2f}, "
+            f"best analytic {min(v for n, v in validation.items() if n != LEARNED):.2f}.",
+            confidence="Validation chose the weights, so it flatters them; `learnfilter ablate` gives the evidence.",
+            job="Train an observation model and tune its analytic opponents.",
+            tables=(
+                Table("Validation", (Column("model"), Column("nats", ".2f", "low")), tuple(validation.items())),
+            ),
+            charts=training_charts(models),
+            provenance=provenance(settings, {"config": models[LEARNED].facts["config"]}),
+            settings=settings_text(settings),
+        ),
+        folder.path / "report.html",
+    )
+    summary = folder.finish({"validation_nats": validation, "parameters": models[LEARNED].facts["parameters"]})
+    for name, value in validation.items():
+        print(f"{name:<16} {value:6.2f} nats on held-out sites")
+    print(f"written: {Path(folder.path)} (models, report.html)")
+    return summary

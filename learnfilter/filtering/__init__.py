@@ -1,0 +1,1 @@
+"""The differentiable Bayes filter on a lattice of poses."""

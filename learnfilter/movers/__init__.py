@@ -1,0 +1,1 @@
+"""Who decides the robot's next short motion."""

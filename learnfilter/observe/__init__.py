@@ -1,0 +1,1 @@
+"""Observation models under one contract, and what they are fitted to."""

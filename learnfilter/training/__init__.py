@@ -1,0 +1,1 @@
+"""Training: analytic fits, matching stage, filter stage, checkpoints."""
