@@ -294,6 +294,7 @@ class ExportConfig(Common):
 class ReplayConfig(Common):
     """Settings of `learnfilter replay`."""
 
+    site: SiteConfig
     bundle: str
     drive: str
     depth_kind: str | None

@@ -16,6 +16,7 @@ from learnfilter.ablation.verdict import Difference, Score, Verdict, choose_anal
 from learnfilter.app.models import LEARNED, Stored
 from learnfilter.app.progress import progress
 from learnfilter.core.files import whole_file
+from learnfilter.core.lock import Lock
 from learnfilter.core.poses import compose, inverse
 from learnfilter.core.seeds import stream
 from learnfilter.core.strip import Strip
@@ -156,5 +157,5 @@ def _held(mass: np.ndarray) -> np.ndarray:
     lock, held = Lock(), []
     for value in mass:
         lock = lock.after(float(value))
-        held.append(lock.running >= LOCK_STRIPS)
+        held.append(lock.held)
     return np.array(held)

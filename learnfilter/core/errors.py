@@ -59,6 +59,10 @@ class BundleError(InputError):
     """A bundle is damaged, newer than this reader, or does not fit itself."""
 
 
+class StepError(InputError):
+    """What the robot handed to one filter step cannot be used."""
+
+
 class ConfigError(InputError):
     """A setting is out of range or contradicts another."""
 

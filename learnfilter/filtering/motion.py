@@ -111,8 +111,9 @@ def _taps(mean: Tensor, variance: Tensor) -> tuple[Tensor, Tensor]:
     reach = 1 + int(math.ceil(4.0 * float(variance.detach().max().sqrt())))
     first = mean.detach().round() - reach
     offsets = first.unsqueeze(-1) + torch.arange(2 * reach + 1, dtype=mean.dtype)
-    weights = shift_weights(mean, variance, offsets)
-    return first.long(), weights / weights.sum(-1, keepdim=True)
+    # second differences in float32 are noise of 1e-7 where tails, and the filter's floor, are far smaller
+    weights = shift_weights(mean.double(), variance.double(), offsets.double()).clamp(min=0)
+    return first.long(), (weights / weights.sum(-1, keepdim=True)).to(mean.dtype)
 
 
 def _turn(belief: Tensor, mean: Tensor, variance: Tensor) -> Tensor:

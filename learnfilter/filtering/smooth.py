@@ -10,6 +10,7 @@ Source: forward-backward smoothing, Rabiner (1989); Särkkä (2013), ch. 8.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Iterator, Mapping
 from typing import NamedTuple
 
@@ -24,11 +25,10 @@ from learnfilter.core.poses import compose, inverse, wrap
 from learnfilter.drives.drive import Drive
 from learnfilter.filtering.grid_filter import FilterState, lattice_of, start, weigh
 from learnfilter.filtering.motion import Lattice, MotionModel, predict
-from learnfilter.filtering.rollout import rollout, weighed_steps
+from learnfilter.filtering.rollout import weighed_steps
 from learnfilter.observe.contract import ObservationModel
 from learnfilter.render.site import Site
 
-KEPT_BELIEF = 1e-6  # less is not stored between the passes: the smoother gives it back as zero
 SURE_MASS = 0.9  # a pose with less smoothed mass near it is no reference
 # How well a person knows a pose that they mark on the plan.
 KNOWN_SPREAD_M, KNOWN_SPREAD_RAD = 0.3, np.radians(15.0)
@@ -52,18 +52,6 @@ class Labels(NamedTuple):
     mass: NDArray[np.float64]
 
 
-class _Stored(NamedTuple):
-    """A filtered belief without its smallest entries: flat index and value."""
-
-    index: Tensor
-    value: Tensor
-
-    def dense(self, like: Tensor) -> Tensor:
-        flat = like.new_zeros(like.numel())
-        flat[self.index] = self.value
-        return flat.view_as(like)
-
-
 def smoothed_beliefs(
     state: FilterState,
     odometry: Tensor,
@@ -74,34 +62,48 @@ def smoothed_beliefs(
 ) -> Iterator[tuple[int, Tensor]]:
     """Yield each step with p(pose | all strips) [h r c], last step first.
 
+    Filtered beliefs are kept for some steps only and computed again from there: memory grows with the
+    root of the drive's length.  (Keeping but their large entries would lose the true pose wherever the
+    filter was wrong for a while, which is where a smoother is needed.)
+
     Args:
         state: the belief to begin with, a batch of one.
         odometry: [s 3] sensor motion; the first is not applied.
-        log_likelihood: step -> [1 n h] nats; asked for each step twice.
+        log_likelihood: step -> [1 n h] nats; asked for each step three times.
         lattice, motion, floor: see `weigh` and `predict`.
 
     Raises:
         ImpossibleEvidence: as `weigh`, or the strips contradict each other.
     """
-    stored = []
-    with torch.no_grad():
-        for after in rollout(state, odometry[:, None], log_likelihood, lattice, motion, floor):
-            flat = after.belief.flatten()
-            index = torch.nonzero(flat > KEPT_BELIEF * flat.max()).flatten()
-            stored.append(_Stored(index, flat[index]))
+
+    @torch.no_grad()
+    def after(state: FilterState, step: int) -> FilterState:
+        if step > 0:
+            belief, _ = predict(state.belief, odometry[step, None], lattice, motion)
+            state = FilterState(belief, state.log_evidence)
+        return weigh(state, log_likelihood(step), lattice, floor)
+
+    count, stride = len(odometry), math.isqrt(len(odometry)) + 1
+    kept = [state]  # before step 0, stride, 2 stride, ...
+    for step in range(count):
+        state = after(state, step)
+        if (step + 1) % stride == 0:
+            kept.append(state)
     live = lattice.live.to(state.belief.dtype).expand_as(state.belief)
     later = live  # what the later strips say of each pose, up to a constant
-    for step in range(len(odometry) - 1, -1, -1):
-        filtered = stored[step].dense(state.belief)
-        both = filtered * later
-        if not both.sum() > 0:
-            raise ImpossibleEvidence(f"no live pose explains the strips before and after weighed strip {step}")
-        yield step, _share(both)[0]
-        if step > 0:
-            with torch.no_grad():
-                weighed = weigh(FilterState(_share(later), state.log_evidence), log_likelihood(step), lattice)
-            before = stored[step - 1].dense(state.belief)
-            later = _carry_back(before, weighed.belief, odometry[step, None], lattice, motion, floor) * live
+    for first in reversed(range(0, count, stride)):
+        run = [kept[first // stride]]
+        for step in range(first, min(first + stride, count)):
+            run.append(after(run[-1], step))
+        for step in reversed(range(first, first + len(run) - 1)):
+            before, filtered = run[step - first], run[step - first + 1]
+            both = filtered.belief * later
+            if not both.sum() > 0:
+                raise ImpossibleEvidence(f"the strips before and after weighed strip {step} contradict")
+            yield step, _share(both)[0]
+            if step > 0:
+                seen = weigh(FilterState(_share(later), state.log_evidence), log_likelihood(step), lattice)
+                later = live * _carry_back(before.belief, seen.belief, odometry[step, None], lattice, motion, floor)
 
 
 def _share(positive: Tensor) -> Tensor:
@@ -117,14 +119,14 @@ def _carry_back(
     """
     before = before.detach().requires_grad_()
     predicted, lost = predict(before, odometry, lattice, motion)
-    kept = 1 - lost
-    # predicted x kept is linear in `before`, whatever its value
-    (transposed,) = torch.autograd.grad((predicted * later).sum() * kept.sum(), before)
+    # predicted x what is left is linear in `before`, whatever its value
+    (transposed,) = torch.autograd.grad((predicted * later).sum() * (1 - lost).sum(), before)
+    kept = 1 - lost.detach()
     uniform = later.sum() / (lattice.live.sum() * len(lattice.headings))
-    if float(kept) <= 1e-12:  # all was lost: the forward pass began anew from everywhere
+    if kept.item() <= 1e-12:  # all was lost: the forward pass began anew from everywhere
         return uniform.expand_as(later)
     # clamped: rounding leaves values of either sign where nothing leads on
-    return _share((1 - floor) * transposed.clamp(min=0) / kept.detach() + floor * uniform)
+    return _share((1 - floor) * transposed.clamp(min=0) / kept + floor * uniform)
 
 
 def smooth(

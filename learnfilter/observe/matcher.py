@@ -238,15 +238,17 @@ class Matcher(ObservationModel):
         return both
 
     def psi(self, fixed: Tensor, context: Tensor) -> Tensor:
-        """[n p channels] fixed features plus the learned residual."""
+        """[n p channels] fixed features plus the learned residual, which is silent where the plan is."""
         if not self.shape.residual:
             return fixed
-        range_rank, colour_rank, _ = self.ranks
+        range_rank, colour_rank, extra = self.ranks
         hidden = torch.cat([fixed[..., : range_rank + colour_rank], context], -1).transpose(1, 2)
         margin = self.shape.kernel // 2
         hidden = F.relu(self.ring_in(F.pad(hidden, (margin, margin), mode="circular")))
         hidden = F.relu(self.ring_mid(F.pad(hidden, (margin, margin), mode="circular")))
-        return fixed + self.ring_out(hidden.transpose(1, 2))
+        sure, known = 1 - context[..., 2], context[..., 3]
+        spoken = [sure] * range_rank + [known] * colour_rank + [sure] * (extra + 1) + [known]
+        return fixed + self.ring_out(hidden.transpose(1, 2)) * torch.stack(spoken, -1)
 
     def read(self, site: Site, chunk: int = 2048) -> Tensor:
         """[n p channels] for every live cell, in chunks so that memory stays small."""

@@ -7,11 +7,23 @@ Adding one takes a module, a line in VERBS, its settings in app/config.py and co
 
 from __future__ import annotations
 
-from learnfilter.app.config import AblateConfig, Common, PlanConfig, RehearseConfig, TrainConfig
+from learnfilter.app.config import (
+    AblateConfig,
+    Common,
+    DemoConfig,
+    ExportConfig,
+    PlanConfig,
+    RehearseConfig,
+    ReplayConfig,
+    TrainConfig,
+)
 
 VERBS: dict[str, type[Common]] = {
     "plan": PlanConfig,
     "rehearse": RehearseConfig,
     "train": TrainConfig,
     "ablate": AblateConfig,
+    "export": ExportConfig,
+    "replay": ReplayConfig,
+    "demo": DemoConfig,
 }

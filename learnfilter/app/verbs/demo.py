@@ -1,0 +1,142 @@
+"""The whole chain in one go: sites, training, ablation, bundle, replay, report.
+
+Invents sites, trains a matcher on some and tunes the analytic models, compares them on sites none has seen,
+exports a bundle for one of those, replays a drive through the NumPy runtime, and prints the way to the
+report. With site.file=PATH the comparison, the bundle and the replay are made on your own plan with
+simulated drives; training stays in invented sites. A killed run is taken up again by the same command.
+
+Example:
+  learnfilter demo site.file=toy_worlds/lindqvist_office.geojson
+"""
+
+from __future__ import annotations
+
+import time
+from dataclasses import replace
+from typing import Any
+
+from learnfilter.app.build import build_plan
+from learnfilter.app.config import DemoConfig, TrainConfig
+from learnfilter.app.exporting import export_bundle
+from learnfilter.app.judging import Judgement, judge_models, watch
+from learnfilter.app.models import LEARNED, Stored
+from learnfilter.app.pages import (
+    DEPTH_ONLY,
+    SIMULATED,
+    forests,
+    provenance,
+    score_charts,
+    score_tables,
+    settings_text,
+    size_table,
+    table_lines,
+    training_charts,
+)
+from learnfilter.app.replaying import draw, replay_bundle
+from learnfilter.app.runs import RunFolder, open_run
+from learnfilter.app.studying import Subject, study_subject
+from learnfilter.app.training import train_models
+from learnfilter.app.verbs.train import check_families
+from learnfilter.drives.tables import iter_rows, write_drive
+from learnfilter.export.check import compare
+from learnfilter.plan import check_plan, write_plan
+from learnfilter.report import Column, RunPage, SiteMap, Table, draw_plan, write_page
+from learnfilter.runtime import load_bundle
+
+
+def run(settings: DemoConfig) -> dict[str, Any]:
+    """Do the verb; returns the summary."""
+    check_families(settings)
+    site = settings.site
+    name = build_plan(site).name if site.file else "default"  # a bad plan is refused before hours are spent
+    folder = open_run("demo", settings.name or name, settings)
+    clock = time.monotonic()
+    made_with = _training_part(settings)
+    models = train_models(made_with, folder.path)
+    trained_s = time.monotonic() - clock
+    subject = study_subject(made_with, site, settings.condition, settings.study, settings.seed)
+    found = judge_models(
+        models, subject.grounds, "as configured", folder.path, settings.study.mark, settings.seed,
+        settings.study.hide_colour,
+    )  # fmt: skip
+    shipped = models[LEARNED] if found.verdict.ship == "learned" else models[found.analytic]
+    bundle = export_bundle(made_with, shipped, subject.plans[0], folder.path / "bundle", found.summary())
+    bundle["runtime_tv"] = compare(folder.path / "bundle")
+    replayed = _replay(folder, subject)
+    write_page(_page(settings, folder, models, found, subject, bundle, replayed), folder.path / "report.html")
+    results = {
+        **found.summary(),
+        "validation_nats": {n: m.facts["validation"] for n, m in models.items()},
+        "parameters": models[LEARNED].facts["parameters"],
+        "training_seconds": trained_s,
+        "bundle": {**bundle, "folder": "bundle"},
+        "replay": replayed,
+    }
+    summary = folder.finish(results)
+    print("\n".join(table_lines(found)))
+    print(f"bundle ({shipped.name}): {folder.path / 'bundle'}")
+    print(f"report: {(folder.path / 'report.html').resolve().as_uri()}")
+    return summary
+
+
+def _training_part(settings: DemoConfig) -> TrainConfig:
+    """The settings a training run would have: invented sites, whatever is judged on."""
+    fields = {key: getattr(settings, key) for key in TrainConfig.__dataclass_fields__}
+    return TrainConfig(**{**fields, "site": replace(settings.site, file=None, level=None)})
+
+
+def _replay(folder: RunFolder, subject: Subject) -> dict[str, Any]:
+    """Write the first drive as a table and run the bundle over it, as the robot would."""
+    plan, drive = subject.plans[0], subject.drives[0][0]
+    write_plan(plan, folder.path / "site.geojson")
+    draw_plan(plan, folder.path / "site.png", findings=check_plan(plan))
+    table = folder.path / "drive.parquet"
+    write_drive(drive, table)
+    loaded = load_bundle(folder.path / "bundle")
+    replayed = replay_bundle(loaded, iter_rows(table, loaded.strip), folder.path / "estimates.parquet")
+    draw(replayed, plan, folder.path / "replay.png", f"{drive.name}: the bundle over a recorded drive")
+    return replayed.summary()
+
+
+def _page(
+    settings: DemoConfig,
+    folder: RunFolder,
+    models: dict[str, Stored],
+    found: Judgement,
+    subject: Subject,
+    bundle: dict[str, Any],
+    replayed: dict[str, Any],
+) -> RunPage:
+    plan, strip = subject.plans[0], subject.drives[0][0].strip
+    shown = [models[found.analytic], models[LEARNED]]
+    pairs = list(zip(subject.grounds, subject.plans, strict=True))
+    watched = [(ground, own, 0) for ground, own in pairs[:3]] if len(pairs) > 1 else [(*pairs[0], n) for n in (0, 1)]
+    handed = Table(
+        "What goes to the robot",
+        (Column("bundle"), Column("value", ",d")),
+        (
+            ("bytes in all", bundle["bytes"]),
+            ("bytes of weights", bundle["weights_bytes"]),
+            ("live cells", bundle["cells"]),
+            ("poses", bundle["poses"]),
+            ("rows of the replayed drive", replayed["rows"]),
+            ("locked at row", replayed["locked_at_row"]),
+        ),
+        f"The NumPy runtime reproduces the bundle's vectors to a total variation of {bundle['runtime_tv']:.1e}.",
+    )
+    return RunPage(
+        title=folder.path.name,
+        verb="demo",
+        headline=found.verdict.sentence,
+        confidence=found.verdict.confidence,
+        job=f"Train in invented sites, then judge on {subject.title}.",
+        episodes=tuple(watch(shown, ground, own, strip, number) for ground, own, number in watched),
+        maps=(SiteMap(f"Plan of {plan.name}", plan, check_plan(plan)),),
+        tables=score_tables(found),
+        forests=forests(found),
+        charts=(*score_charts(found), *training_charts(models)),
+        facts=(size_table(models, found), handed),
+        cautions=((SIMULATED,) if plan.has_finishes else (DEPTH_ONLY, SIMULATED)),
+        provenance=provenance(settings, {"config": models[LEARNED].facts["config"], "plan": plan.content_hash()}),
+        settings=settings_text(settings),
+    )

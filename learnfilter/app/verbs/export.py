@@ -1,0 +1,55 @@
+"""Make the folder that goes to the robot: weights, your site, and numbers to check them by.
+
+The bundle holds manifest.json, weights.safetensors, site.safetensors and vectors.npz (inputs and expected
+outputs of whole filter steps). The robot reads it with NumPy and safetensors alone: see
+`learnfilter.runtime`. Any model of a training run can go, the analytic ones too. When the plan changes,
+export again; nothing is trained anew.
+
+Example:
+  learnfilter export model=runs/train/cart site.file=toy_worlds/lindqvist_office.geojson
+"""
+
+from __future__ import annotations
+
+import json
+from pathlib import Path
+from typing import Any
+
+from learnfilter.app.build import build_plan
+from learnfilter.app.config import ExportConfig
+from learnfilter.app.exporting import export_bundle
+from learnfilter.app.grounds import build_lattices
+from learnfilter.app.models import settings_of, stored
+from learnfilter.app.runs import open_run
+from learnfilter.core.errors import ConfigError
+from learnfilter.export.check import compare
+
+
+def run(settings: ExportConfig) -> dict[str, Any]:
+    """Do the verb; returns the summary."""
+    source = Path(settings.model)
+    made_with = settings_of(source)
+    models = stored(source / "models", build_lattices(made_with).layout)
+    if settings.contender not in models:
+        expected = " or ".join(models)
+        raise ConfigError("no such model in this run", place="contender", expected=expected, got=settings.contender)
+    plan = build_plan(settings.site)
+    figures = _figures(settings.ablation)
+    folder = open_run("export", settings.name or plan.name, settings, replace=True)
+    out = Path(settings.out) if settings.out else folder.path / "bundle"
+    sizes = export_bundle(made_with, models[settings.contender], plan, out, figures)
+    sizes["runtime_tv"] = compare(out)
+    print(f"written: {out} ({sizes['bytes'] / 1e6:.1f} MB, {sizes['weights']:,} weights, {sizes['poses']:,} poses)")
+    print(f"the NumPy runtime reproduces its vectors to a total variation of {sizes['runtime_tv']:.1e}")
+    return folder.finish(sizes)
+
+
+def _figures(ablation: str | None) -> dict[str, Any] | None:
+    """Figures of an ablation run."""
+    if ablation is None:
+        return None
+    path = Path(ablation) / "summary.json"
+    try:
+        return dict(json.loads(path.read_text(encoding="utf-8"))["results"])
+    except (OSError, ValueError, KeyError) as error:
+        raise ConfigError("not a finished ablation", file=path, place="ablation", got=error) from error

@@ -1,0 +1,7 @@
+"""Turn a trained filter into the bundle that a robot runs, with vectors to check it by."""
+
+from learnfilter.export.bundle import Provenance, write_bundle
+from learnfilter.export.check import against_torch, compare
+from learnfilter.export.reference import Filter
+
+__all__ = ["Filter", "Provenance", "against_torch", "compare", "write_bundle"]

@@ -1,0 +1,152 @@
+"""Carry a belief through one odometry reading, without torch.
+
+The same step as `filtering/motion.py`, which explains it and which a change here must follow; a test
+holds the two together.  Särkkä (2013), ch. 4, prediction step.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from learnfilter.core.grid import PoseGrid
+
+Floats = NDArray[np.float32]
+SOFTNESS = 0.01  # cells^2; how gently noise gives way to interpolation
+LEAST_VARIANCE = 1e-6  # cells^2
+
+
+@dataclass(frozen=True)
+class MotionNoise:
+    """Spread of odometry as standard deviations.
+
+    Attributes:
+        turn_from_turn: radians a radian turned.
+        turn_from_travel: radians a metre travelled.
+        travel_from_travel: metres a metre travelled (along and across alike).
+        travel_from_turn: metres a radian turned.
+    """
+
+    turn_from_turn: float
+    turn_from_travel: float
+    travel_from_travel: float
+    travel_from_turn: float
+
+    def variances(self, odometry: NDArray[np.floating]) -> tuple[float, float]:
+        """Variance of travel (metres squared, each axis) and of turn (radians squared) of a motion [3]."""
+        travel, turn = float(odometry[0] ** 2 + odometry[1] ** 2), float(odometry[2] ** 2)
+        return (
+            self.travel_from_travel**2 * travel + self.travel_from_turn**2 * turn,
+            self.turn_from_turn**2 * turn + self.turn_from_travel**2 * travel,
+        )
+
+
+def predict(
+    belief: Floats, odometry: Floats, grid: PoseGrid, live: NDArray[np.bool_], noise: MotionNoise
+) -> Floats:
+    """The belief after one odometry reading, p(pose_t | strips before t).
+
+    Args:
+        belief: [h r c] probabilities, zero off the live cells.
+        odometry: [3] forward_m, left_m, turn_rad of the sensor, in its previous frame.
+        grid: the lattice.
+        live: [r c].
+        noise: of odometry.
+
+    Returns:
+        [h r c], summing to one; uniform over live poses where all mass was lost into walls.
+    """
+    travel_variance, turn_variance = noise.variances(odometry)
+    heading = grid.heading_centres().astype(np.float32)
+    forward, left, turn = odometry
+    shift_c = (forward * np.cos(heading) - left * np.sin(heading)) / np.float32(grid.cell_m)
+    shift_r = (forward * np.sin(heading) + left * np.cos(heading)) / np.float32(grid.cell_m)
+    step = grid.heading_step_rad
+    across = (forward**2 + left**2) * step**2 / 12 / grid.cell_m**2
+    direction = np.arctan2(shift_r, shift_c)
+    base = travel_variance / grid.cell_m**2
+    first_r, weights_r = _taps(shift_r, base + across * np.cos(direction) ** 2)
+    first_c, weights_c = _taps(shift_c, base + across * np.sin(direction) ** 2)
+    moved = np.empty_like(belief)
+    for h, plane in enumerate(belief):
+        half = _shift(plane, first_r[h], weights_r[h])
+        moved[h] = _shift(half.T, first_c[h], weights_c[h]).T
+        moved[h] *= clear_path(live, float(shift_r[h]), float(shift_c[h]))
+    kept = float(moved.sum(dtype=np.float64))
+    if kept <= 1e-12:
+        moved[:], kept = live, float(live.sum()) * grid.headings
+    moved /= np.float32(kept)
+    first, weights = _taps(np.array([turn / step]), np.array([turn_variance / step**2]))
+    turned = (np.roll(moved, first[0] + k, axis=0) * weight for k, weight in enumerate(weights[0]))
+    return sum(turned, start=np.zeros_like(moved))
+
+
+def _taps(
+    mean: NDArray[np.floating], variance: NDArray[np.floating]
+) -> tuple[NDArray[np.int64], Floats]:
+    """First offset [i] and weights [i k] of the taps that hold each kernel within 4 sigma."""
+    reach = 1 + math.ceil(4.0 * math.sqrt(float(variance.max())))
+    first = np.rint(mean) - reach
+    weights = shift_weights(mean, variance, first[:, None] + np.arange(2 * reach + 1)).clip(min=0)
+    return first.astype(np.int64), (weights / weights.sum(axis=1, keepdims=True)).astype(np.float32)
+
+
+def shift_weights(
+    mean: NDArray[np.floating], variance: NDArray[np.floating], offsets: NDArray[np.floating]
+) -> NDArray[np.float64]:
+    """Weights [i k] of integer offsets [i k] for shifts of `mean` cells [i] with `variance` cells^2 [i]."""
+    mean, variance = np.asarray(mean, np.float64), np.asarray(variance, np.float64)
+    rest = variance - _interpolation_variance(mean, np.maximum(variance - 1 / 6, 0.0))
+    spread = np.sqrt(SOFTNESS * np.logaddexp(0.0, rest / SOFTNESS) + LEAST_VARIANCE)[:, None]
+
+    def ramp(x: NDArray[np.float64]) -> NDArray[np.float64]:
+        """Integral of the normal distribution function: a smoothed max(x, 0)."""
+        u = x / spread
+        return x * _normal_cdf(u) + spread * np.exp(-0.5 * u * u) / math.sqrt(2 * math.pi)
+
+    x = offsets - mean[:, None]
+    return ramp(x + 1) - 2 * ramp(x) + ramp(x - 1)
+
+
+def _interpolation_variance(
+    mean: NDArray[np.float64], variance: NDArray[np.float64]
+) -> NDArray[np.float64]:
+    """Variance that linear interpolation adds to a Gaussian, cells^2 (first harmonics of f(1 - f))."""
+    harmonics = (
+        np.cos(2 * np.pi * n * mean) * np.exp(-2 * (np.pi * n) ** 2 * variance) / (np.pi * n) ** 2
+        for n in (1, 2, 3)
+    )
+    return 1 / 6 - sum(harmonics, start=np.zeros_like(mean))
+
+
+def _normal_cdf(u: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Distribution function of the standard normal; a handful of taps, so no vector library."""
+    return np.array([0.5 * math.erfc(-v / math.sqrt(2)) for v in u.flat]).reshape(u.shape)
+
+
+def _shift(plane: Floats, first: np.int64, weights: Floats) -> Floats:
+    """Sum of weighted shifts of a plane along its first axis; what leaves it is lost."""
+    out, size = np.zeros_like(plane), len(plane)
+    for shift, weight in enumerate(weights, int(first)):
+        low, high = max(0, shift), min(size, size + shift)
+        if low < high:
+            out[low:high] += weight * plane[low - shift : high - shift]
+    return out
+
+
+def clear_path(live: NDArray[np.bool_], shift_r: float, shift_c: float) -> NDArray[np.bool_]:
+    """[r c] whether the straight way into each cell, back along a shift in cells, stays on live cells."""
+    rows, columns = live.shape
+    clear = live.copy()
+    steps = math.ceil(max(abs(shift_r), abs(shift_c)))
+    for step in range(1, steps):
+        r, c = round(shift_r * step / steps), round(shift_c * step / steps)
+        behind = np.zeros_like(live)
+        to_r, to_c = (slice(max(0, s), max(0, n + min(0, s))) for s, n in ((r, rows), (c, columns)))
+        from_r, from_c = (slice(max(0, -s), max(0, n + min(0, -s))) for s, n in ((r, rows), (c, columns)))
+        behind[to_r, to_c] = live[from_r, from_c]
+        clear &= behind
+    return clear
