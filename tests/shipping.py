@@ -1,14 +1,17 @@
 """A small site with a drive, and filters of every kind to ship, for the tests of export and runtime."""
 
+from collections.abc import Callable
 from functools import cache
+from pathlib import Path
 
 import numpy as np
+import pytest
 import torch
 
 from learnfilter.core.scale import RangeScale
 from learnfilter.core.strip import Strip, even_strip, lay_on_ring
 from learnfilter.drives.drive import Drive
-from learnfilter.export import Filter, Provenance
+from learnfilter.export import Filter, Provenance, write_bundle
 from learnfilter.filtering.motion import MotionModel
 from learnfilter.observe.beam import BeamModel
 from learnfilter.observe.blend import Blend
@@ -28,7 +31,7 @@ KINDS = ("beam", "beam+colour", "endpoint+colour", "matcher", "matcher without r
 HEADINGS, REACH_M = 16, 6.0
 # columns run clockwise from 80 degrees, one is blind, the sensor sits off the base and askew
 STRIP = Strip(even_strip(80.0, -11.25, 16), 0.15, REACH_M, blind=(3,), mount=(0.15, -0.05, 0.3))
-LAYOUT = lay_on_ring(STRIP, HEADINGS, 2)
+LAYOUT = lay_on_ring(STRIP, HEADINGS, 4)  # fine enough for two looks a bin
 WEIGHING = Weighing(0.4, 0.4, 1e-4)  # twice what a simulated robot moves between strips
 PROVENANCE = Provenance("plan", "config", [0], {})
 
@@ -71,3 +74,19 @@ def model_of(kind: str) -> Blend | Matcher:
 def filter_of(kind: str, family: str = "offices") -> Filter:
     """A filter to ship."""
     return Filter(model_of(kind), MotionModel(), rehearsed(family)[0], STRIP, WEIGHING)
+
+
+_WRITTEN: dict[str, Path] = {}
+
+
+@pytest.fixture(scope="session")
+def shipped(tmp_path_factory) -> Callable[[str], Path]:
+    """Folder of the bundle of a kind, written once; not to be changed."""
+
+    def folder(kind: str) -> Path:
+        if kind not in _WRITTEN:
+            _WRITTEN[kind] = tmp_path_factory.mktemp("shipped") / "bundle"
+            write_bundle(_WRITTEN[kind], filter_of(kind), rehearsed()[1], PROVENANCE)
+        return _WRITTEN[kind]
+
+    return folder

@@ -25,7 +25,7 @@ ARROWS: dict[str, set[str]] = {
     "training": {"movers", "filtering"},
     "ablation": {"movers", "filtering"},
     "survey": {"render", "runtime"},
-    "export": {"observe", "runtime"},
+    "export": {"filtering", "runtime"},
     "sim": {"render", "drives"},
     "report": {"render"},
 }

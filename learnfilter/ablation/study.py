@@ -15,11 +15,10 @@ import torch
 
 from learnfilter.core.errors import InputError
 from learnfilter.drives.metrics import first_lock, located, travelled
+from learnfilter.filtering.course import Ground
 from learnfilter.filtering.motion import MotionModel
 from learnfilter.filtering.trace import trace
 from learnfilter.observe.contract import ObservationModel
-from learnfilter.training.recipe import without_colour
-from learnfilter.training.samples import Ground
 
 MARKS = (1, 2, 4, 8, 16, 32)  # strips after which a filter is judged
 
@@ -87,7 +86,7 @@ def _rows_on(contender: Contender, ground: Ground, condition: str, done: set[tup
     for course in wanted:
         steps = course.steps
         if contender.hide_colour:
-            steps = steps._replace(strips=without_colour(steps.strips))
+            steps = steps._replace(strips=steps.strips.without_colour())
         result = trace(
             contender.model, contender.motion, ground.site, course._replace(steps=steps), contender.floor,
             max(MARKS), features,

@@ -73,7 +73,9 @@ def scores(rows: Sequence[Row], contenders: Sequence[str], rng: np.random.Genera
     ]
 
 
-def differences(rows: Sequence[Row], learned: str, analytic: str, rng: np.random.Generator) -> list[Difference]:
+def differences(
+    rows: Sequence[Row], learned: str, analytic: str, rng: np.random.Generator
+) -> list[Difference]:
     """Paired differences after each number of strips."""
     order, sites = drives_of(rows)
 
@@ -117,8 +119,14 @@ def decide(
     if at.located.low > 0 and at.nll.low > 0 and not worse:
         return Verdict("learned", f"Ship the learned model: {learned} beats {analytic}.", confidence)
     if at.located.high <= 0 or (at.nll.high < 0 and at.located.value <= 0):
-        return Verdict("analytic", f"Ship the analytic model: {learned} does not beat {analytic}.", confidence)
-    return Verdict("cannot tell", f"Cannot tell {learned} from {analytic}: {_more(rows, learned, analytic, mark)}", confidence)
+        return Verdict(
+            "analytic", f"Ship the analytic model: {learned} does not beat {analytic}.", confidence
+        )
+    return Verdict(
+        "cannot tell",
+        f"Cannot tell {learned} from {analytic}: {_more(rows, learned, analytic, mark)}",
+        confidence,
+    )
 
 
 def _more(rows: Sequence[Row], learned: str, analytic: str, mark: int) -> str:

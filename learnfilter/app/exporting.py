@@ -7,9 +7,9 @@ from pathlib import Path
 from typing import Any
 
 from learnfilter.app.build import build_strip
-from learnfilter.app.config import TrainConfig
 from learnfilter.app.grounds import build_lattices, drives_on
 from learnfilter.app.models import Stored
+from learnfilter.app.verb_settings import TrainConfig
 from learnfilter.core.strip import Strip
 from learnfilter.drives.drive import Drive
 from learnfilter.export import Filter, Provenance, write_bundle
@@ -28,9 +28,9 @@ def filter_for(made_with: TrainConfig, model: Stored, plan: FloorPlan) -> Filter
     return Filter(model.model, model.motion, lattices.render(plan), build_strip(made_with.strip), weighing)
 
 
-def vector_drive(plan: FloorPlan, strip: Strip, radius_m: float, seed: int) -> Drive:
+def vector_drive(plan: FloorPlan, strip: Strip, radius_m: float, seed: int, rows: int = VECTOR_ROWS) -> Drive:
     """A simulated drive for the bundle's test vectors."""
-    return drives_on(plan, strip, Conditions(), 1, VECTOR_ROWS, seed, radius_m, lambda *_: None)[0]
+    return drives_on(plan, strip, Conditions(), 1, rows, seed, radius_m, lambda *_: None)[0]
 
 
 def export_bundle(
@@ -54,5 +54,7 @@ def export_bundle(
     chosen = filter_for(made_with, model, plan)
     drive = vector_drive(plan, chosen.strip, made_with.grid.robot_radius_m, made_with.seed)
     stages = model.facts["stages"]
-    provenance = Provenance(plan.content_hash(), model.facts["config"], [model.facts["seed"]], {"stages": stages})
+    provenance = Provenance(
+        plan.content_hash(), model.facts["config"], [model.facts["seed"]], {"stages": stages}
+    )
     return write_bundle(folder, chosen, drive, provenance, figures, cautions)

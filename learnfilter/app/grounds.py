@@ -10,12 +10,13 @@ import numpy as np
 import torch
 
 from learnfilter.app.build import build_strip
-from learnfilter.app.config import MotionConfig, TrainConfig
+from learnfilter.app.config import MotionConfig
+from learnfilter.app.verb_settings import TrainConfig
 from learnfilter.core.poses import between, compose
 from learnfilter.core.seeds import stream
 from learnfilter.core.strip import RingLayout, Strip, lay_on_ring
 from learnfilter.drives.drive import Drive
-from learnfilter.filtering.course import Truth, course_of, truth_of
+from learnfilter.filtering.course import Ground, Truth, course_of, truth_of
 from learnfilter.filtering.motion import MotionSettings
 from learnfilter.filtering.rollout import lay_strips
 from learnfilter.observe.contract import Strips
@@ -26,8 +27,7 @@ from learnfilter.sim.conditions import Conditions
 from learnfilter.sim.driver import free_poses
 from learnfilter.sim.rehearse import rehearse, rehearse_site
 from learnfilter.sim.sensor import sense
-from learnfilter.sim.world import build_world
-from learnfilter.training.samples import Ground
+from learnfilter.sim.world import World, build_world
 
 
 @dataclass(frozen=True)
@@ -146,7 +146,7 @@ def make_stills(
     return strips, truth_of(site, np.concatenate(poses))
 
 
-def _as_drive(world, robot: np.ndarray, strip: Strip, rng: np.random.Generator) -> Drive:
+def _as_drive(world: World, robot: np.ndarray, strip: Strip, rng: np.random.Generator) -> Drive:
     """Independent poses as the drive of a robot that leaps between them."""
     time_s = np.arange(len(robot), dtype=float)
     depth, rgb = sense(world, compose(robot, strip.mount), time_s, strip, rng)

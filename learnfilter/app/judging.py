@@ -12,7 +12,15 @@ import pyarrow.parquet as pq
 import torch
 
 from learnfilter.ablation.study import MARKS, Contender, Row, run_study
-from learnfilter.ablation.verdict import Difference, Score, Verdict, choose_analytic, decide, differences, scores
+from learnfilter.ablation.verdict import (
+    Difference,
+    Score,
+    Verdict,
+    choose_analytic,
+    decide,
+    differences,
+    scores,
+)
 from learnfilter.app.models import LEARNED, Stored
 from learnfilter.app.progress import progress
 from learnfilter.core.files import whole_file
@@ -20,11 +28,10 @@ from learnfilter.core.lock import Lock
 from learnfilter.core.poses import compose, inverse
 from learnfilter.core.seeds import stream
 from learnfilter.core.strip import Strip
-from learnfilter.core.lock import LOCK_STRIPS, Lock
+from learnfilter.filtering.course import Ground
 from learnfilter.filtering.trace import trace
 from learnfilter.plan import FloorPlan
 from learnfilter.report import Episode, Placement, Track
-from learnfilter.training.samples import Ground
 
 
 class Judgement(NamedTuple):
@@ -51,7 +58,12 @@ class Judgement(NamedTuple):
             "best_analytic": self.analytic,
             "verdict": self.verdict._asdict(),
             "scores": [
-                {"contender": s.contender, "strips": s.mark, "located": s.located.as_dict(), "nll": s.nll.as_dict()}
+                {
+                    "contender": s.contender,
+                    "strips": s.mark,
+                    "located": s.located.as_dict(),
+                    "nll": s.nll.as_dict(),
+                }
                 for s in self.scores
             ],
             "differences": [
@@ -122,10 +134,19 @@ def watch(
         with torch.no_grad():
             features = model.model.read(ground.site)
         seen = trace(
-            model.model, model.motion, ground.site, course, model.facts["floor"], steps, features, keep_marginals=True
+            model.model,
+            model.motion,
+            ground.site,
+            course,
+            model.facts["floor"],
+            steps,
+            features,
+            keep_marginals=True,
         )
         assert seen.marginals is not None
-        near = np.array([_near(m, ground, pose) for m, pose in zip(seen.marginals, course.poses, strict=False)])
+        near = np.array(
+            [_near(m, ground, pose) for m, pose in zip(seen.marginals, course.poses, strict=False)]
+        )
         tracks.append(
             Track(
                 model.name, seen.marginals, compose(seen.estimate, back), seen.entropy, near, _held(seen.mass)

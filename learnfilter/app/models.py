@@ -8,7 +8,8 @@ from typing import Any, NamedTuple
 from omegaconf import OmegaConf
 
 from learnfilter.ablation.study import Contender
-from learnfilter.app.config import TrainConfig, typed
+from learnfilter.app.config import typed
+from learnfilter.app.verb_settings import TrainConfig
 from learnfilter.core.errors import ConfigError
 from learnfilter.core.strip import RingLayout
 from learnfilter.filtering.motion import MotionModel
@@ -48,12 +49,18 @@ def store(folder: Path, name: str, trained: Trained, facts: dict[str, Any]) -> S
     """Write a trained model; returns it as it will be read."""
     described, tensors = describe(trained.model)
     stages = {
-        key: {"iterations": s.iterations, "best_iteration": s.best_iteration, "score": s.best_score, "history": s.history}
+        key: {
+            "iterations": s.iterations,
+            "best_iteration": s.best_iteration,
+            "score": s.best_score,
+            "history": s.history,
+        }
         for key, s in trained.stages.items()
         if s.iterations
     }
-    whole = {"name": name, "model": described, "stages": stages, **facts}
-    whole["validation"] = min((s["score"] for s in stages.values()), default=None)
+    scores = [s.best_score for s in trained.stages.values() if s.iterations]
+    validation = scores[-1] if scores else None  # each stage begins with the best weights of the one before
+    whole = {"name": name, "model": described, "stages": stages, "validation": validation, **facts}
     motion = {f"motion.{key}": value for key, value in trained.motion.state_dict().items()}
     model = {f"model.{key}": value for key, value in tensors.items()}
     save_tensors(folder / f"{name}.safetensors", model | motion, whole)
@@ -72,11 +79,28 @@ def stored(folder: Path, layout: RingLayout) -> dict[str, Stored]:
         tensors, facts = load_tensors(path)
         own = {k.removeprefix("model."): v for k, v in tensors.items() if k.startswith("model.")}
         motion = MotionModel()
-        motion.load_state_dict({k.removeprefix("motion."): v for k, v in tensors.items() if k.startswith("motion.")})
+        motion.load_state_dict(
+            {k.removeprefix("motion."): v for k, v in tensors.items() if k.startswith("motion.")}
+        )
         found[facts["name"]] = Stored(facts["name"], rebuild(layout, facts["model"], own), motion, facts)
     if not found:
-        raise ConfigError("no trained models here", file=folder, place="model", expected="a run of `learnfilter train`")
+        raise ConfigError(
+            "no trained models here", file=folder, place="model", expected="a run of `learnfilter train`"
+        )
     return found
+
+
+def chosen(run: Path, contender: str, layout: RingLayout) -> Stored:
+    """One model of a training run.
+
+    Raises:
+        ConfigError: the run has none of that name.
+    """
+    models = stored(run / "models", layout)
+    if contender not in models:
+        expected = " or ".join(models)
+        raise ConfigError("no such model in this run", place="contender", expected=expected, got=contender)
+    return models[contender]
 
 
 def settings_of(run: Path) -> TrainConfig:
@@ -87,7 +111,10 @@ def settings_of(run: Path) -> TrainConfig:
     """
     record = run / "config.yaml"
     if not record.is_file():
-        raise ConfigError("no training run here", file=run, place="model", expected="a folder with config.yaml")
-    composed = OmegaConf.load(record)
+        raise ConfigError(
+            "no training run here", file=run, place="model", expected="a folder with config.yaml"
+        )
+    composed = OmegaConf.to_container(OmegaConf.load(record))
+    assert isinstance(composed, dict)
     known = {key: composed[key] for key in TrainConfig.__dataclass_fields__ if key in composed}
     return typed(OmegaConf.create(known), TrainConfig)

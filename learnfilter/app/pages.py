@@ -5,7 +5,7 @@ from __future__ import annotations
 import sys
 from collections.abc import Mapping, Sequence
 from dataclasses import asdict
-from typing import Any
+from typing import Any, Literal
 
 import numpy as np
 from omegaconf import OmegaConf
@@ -15,6 +15,7 @@ from learnfilter.app.judging import Judgement
 from learnfilter.app.models import LEARNED, Stored
 from learnfilter.report import Chart, Column, Curve, Forest, Table
 from learnfilter.report import Interval as Bar
+from learnfilter.report.model import Cell
 
 DEPTH_ONLY = "Depth only: the plan names no finishes, so colour gives no evidence there."
 SIMULATED = (
@@ -33,13 +34,18 @@ def score_tables(found: Judgement) -> tuple[Table, ...]:
     names = list(dict.fromkeys(score.contender for score in found.scores))
     cell = {(s.contender, s.mark): s for s in found.scores}
     tables = []
-    for title, field, best, form in (
-        ("Located share after n strips", "located", "high", ".2f"),
-        ("Nats of the true pose after n strips", "nll", "low", ".2f"),
-    ):
-        columns = (Column("model"), *(Column(str(mark), form, best) for mark in marks))  # type: ignore[arg-type]
-        rows = tuple((name, *(_bar(getattr(cell[name, m], field)) for m in marks)) for name in names)
-        tables.append(Table(title, columns, rows, "Mean over sites with 95 % interval, bootstrap over sites."))
+    kinds: tuple[tuple[str, str, Literal["high", "low"]], ...] = (
+        ("Located share after n strips", "located", "high"),
+        ("Nats of the true pose after n strips", "nll", "low"),
+    )
+    for title, field, best in kinds:
+        columns = (Column("model"), *(Column(str(mark), ".2f", best) for mark in marks))
+        rows: tuple[tuple[Cell, ...], ...] = tuple(
+            (name, *(_bar(getattr(cell[name, m], field)) for m in marks)) for name in names
+        )
+        tables.append(
+            Table(title, columns, rows, "Mean over sites with 95 % interval, bootstrap over sites.")
+        )
     return tuple(tables)
 
 
@@ -73,7 +79,10 @@ def training_charts(models: Mapping[str, Stored]) -> tuple[Chart, ...]:
     for stage, facts in models[LEARNED].facts["stages"].items():
         history = np.array(facts["history"], dtype=float)
         if len(history) > 1:
-            curves = (Curve("training loss", history[:, 0], history[:, 1]), Curve("validation", history[:, 0], history[:, 2]))
+            curves = (
+                Curve("training loss", history[:, 0], history[:, 1]),
+                Curve("validation", history[:, 0], history[:, 2]),
+            )
             charts.append(Chart(f"Training, {stage} stage", "iteration", "nats", curves))
     return tuple(charts)
 
@@ -113,5 +122,7 @@ def table_lines(found: Judgement) -> Sequence[str]:
     lines = [f"{'located share after':<{width}}  " + "".join(f"{m:>18}" for m in marks)]
     for name in dict.fromkeys(score.contender for score in found.scores):
         row = [cell[name, m].located for m in marks]
-        lines.append(f"{name:<{width}}  " + "".join(f"{i.value:>6.2f} ({i.low:.2f}-{i.high:.2f})" for i in row))
+        lines.append(
+            f"{name:<{width}}  " + "".join(f"{i.value:>6.2f} ({i.low:.2f}-{i.high:.2f})" for i in row)
+        )
     return [*lines, "", found.verdict.sentence, found.verdict.confidence]

@@ -6,14 +6,16 @@ from collections.abc import Sequence
 from typing import NamedTuple
 
 from learnfilter.app.build import build_conditions, build_plan, build_strip
-from learnfilter.app.config import SiteConfig, StudyConfig, TrainConfig
+from learnfilter.app.config import SiteConfig
 from learnfilter.app.grounds import Rehearsal, build_lattices, drives_on, make_grounds
 from learnfilter.app.progress import progress
+from learnfilter.app.recipes import StudyConfig
+from learnfilter.app.verb_settings import TrainConfig
 from learnfilter.core.errors import DriveError
 from learnfilter.drives.drive import Drive
 from learnfilter.drives.tables import read_drive
+from learnfilter.filtering.course import Ground
 from learnfilter.plan import FloorPlan
-from learnfilter.training.samples import Ground
 
 # A single plan stands for a dozen invented sites with two drives each.
 DRIVES_ON_ONE_PLAN = 12
@@ -36,7 +38,12 @@ class Subject(NamedTuple):
 
 
 def study_subject(
-    settings: TrainConfig, site: SiteConfig, condition: object, study: StudyConfig, seed: int, recorded: Sequence[str] = ()
+    settings: TrainConfig,
+    site: SiteConfig,
+    condition: object,
+    study: StudyConfig,
+    seed: int,
+    recorded: Sequence[str] = (),
 ) -> Subject:
     """Make or read what models are judged on.
 
@@ -55,11 +62,20 @@ def study_subject(
     conditions = build_conditions(condition)
     if site.file is None:
         rehearsal = Rehearsal(
-            tuple(site.families), study.sites, study.drives, study.rows, 0, site.width_m, site.depth_m, conditions
+            tuple(site.families),
+            study.sites,
+            study.drives,
+            study.rows,
+            0,
+            site.width_m,
+            site.depth_m,
+            conditions,
         )
         with progress("unseen sites") as tick:
             made = make_grounds(rehearsal, strip, lattices, seed, "test", tick)
-        return Subject(made.grounds, made.plans, made.drives, f"{study.sites} invented sites, none seen in training")
+        return Subject(
+            made.grounds, made.plans, made.drives, f"{study.sites} invented sites, none seen in training"
+        )
     plan = build_plan(site)
     if recorded:
         drives = tuple(read_drive(path, strip, depth_kind=settings.strip.depth_kind) for path in recorded)
@@ -67,7 +83,9 @@ def study_subject(
     else:
         count = study.drives * DRIVES_ON_ONE_PLAN
         with progress("drives on your plan") as tick:
-            drives = drives_on(plan, strip, conditions, count, study.rows, seed, lattices.robot_radius_m, tick)
+            drives = drives_on(
+                plan, strip, conditions, count, study.rows, seed, lattices.robot_radius_m, tick
+            )
         title = f"{count} simulated drives on {plan.name}"
     for drive in drives:
         if drive.strip.columns != strip.columns:

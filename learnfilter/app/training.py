@@ -8,18 +8,31 @@ from collections.abc import Sequence
 from dataclasses import asdict
 from pathlib import Path
 
+import torch
+
 from learnfilter.app.board import Board
 from learnfilter.app.build import build_conditions, build_strip
-from learnfilter.app.config import StageConfig, TrainConfig
 from learnfilter.app.grounds import Lattices, Rehearsal, build_lattices, build_motion, make_grounds
 from learnfilter.app.models import LEARNED, Stored, store
 from learnfilter.app.progress import progress
+from learnfilter.app.recipes import StageConfig
+from learnfilter.app.verb_settings import TrainConfig
 from learnfilter.core.seeds import stream
-from learnfilter.observe.matcher import MatcherShape
-from learnfilter.training.analytic import BirthSettings, birth_of, fit_analytic
+from learnfilter.filtering.course import Ground
+from learnfilter.observe.blend import Blend
+from learnfilter.observe.contract import ObservationModel
+from learnfilter.observe.matcher import Birth, Matcher, MatcherShape
+from learnfilter.training.analytic import BirthSettings, Fits, birth_of, fit_analytic
 from learnfilter.training.loop import StageSettings
-from learnfilter.training.recipe import FilterSettings, MatchingSettings, Trained, Trainer, blend_kinds, parameters
-from learnfilter.training.samples import Ground
+from learnfilter.training.recipe import (
+    FilterSettings,
+    MatchingSettings,
+    Trained,
+    Trainer,
+    blend_kinds,
+    parameters,
+)
+from learnfilter.training.validation import validate
 
 
 def config_hash(settings: object) -> str:
@@ -41,7 +54,10 @@ def training_grounds(settings: TrainConfig, lattices: Lattices) -> tuple[Sequenc
     """Sites to train on, and sites to choose weights by."""
     recipe, strip = settings.train, build_strip(settings.strip)
     grounds = []
-    for purpose, sites, stills in (("train", recipe.sites, recipe.stills), ("validation", recipe.validation_sites, 0)):
+    for purpose, sites, stills in (
+        ("train", recipe.sites, recipe.stills),
+        ("validation", recipe.validation_sites, 0),
+    ):
         rehearsal = rehearsal_of(settings, sites, recipe.drives, recipe.rows, stills)
         with progress(f"{purpose} sites") as tick:
             grounds.append(make_grounds(rehearsal, strip, lattices, settings.seed, purpose, tick).grounds)
@@ -50,6 +66,39 @@ def training_grounds(settings: TrainConfig, lattices: Lattices) -> tuple[Sequenc
 
 def _stage(name: str, settings: StageConfig) -> StageSettings:
     return StageSettings(name=name, **asdict(settings))
+
+
+def _birth(parent: ObservationModel, fits: Fits, settings: TrainConfig) -> Birth:
+    """What the matcher is born from: the tuned blend, at the ranks that `observe` asks for."""
+    assert isinstance(parent, Blend)
+    observe = settings.observe
+    ranks = BirthSettings(
+        observe.range_first_m, observe.range_growth, observe.range_rank, observe.colour_rank
+    )
+    return birth_of(parent, fits, ranks)
+
+
+def untrained_gap(
+    settings: TrainConfig, models: dict[str, Stored], train: Sequence[Ground], held_out: Sequence[Ground]
+) -> float:
+    """Nats that an untrained matcher differs from the blend it is born from: mean over first strips.
+
+    Args:
+        settings: of the run.
+        models: its models; the tuned blend is taken from them.
+        train: the grounds they were fitted to.
+        held_out: where both are scored.
+    """
+    lattices = build_lattices(settings)
+    fits = fit_analytic(train, settings.strip.max_range_m, stream(settings.seed, "fit"))
+    parent = models["beam+colour" if fits.colour else "beam"]
+    birth = _birth(parent.model, fits, settings)
+    newborn = Matcher(lattices.layout, birth, MatcherShape(), torch.Generator().manual_seed(0))
+    nats = [
+        validate(model, parent.motion, held_out, settings.motion.floor, 1).score
+        for model in (newborn, parent.model)
+    ]
+    return abs(nats[0] - nats[1])
 
 
 def train_models(settings: TrainConfig, folder: Path) -> dict[str, Stored]:
@@ -71,7 +120,11 @@ def train_models(settings: TrainConfig, folder: Path) -> dict[str, Stored]:
             train,
             held_out,
             FilterSettings(
-                tuple(recipe.lengths), recipe.every_step, settings.motion.floor, recipe.hide_colour, recipe.validation_steps
+                tuple(recipe.lengths),
+                recipe.every_step,
+                settings.motion.floor,
+                recipe.hide_colour,
+                recipe.validation_steps,
             ),
             MatchingSettings(recipe.strips, recipe.decoys),
             settings.seed,
@@ -86,17 +139,17 @@ def train_models(settings: TrainConfig, folder: Path) -> dict[str, Stored]:
             return trained
 
         tuned = {
-            kind: keep(kind, trainer.tune_blend(kind, fits, lattices.layout, motion, _stage("tuning", recipe.tuning)))
+            kind: keep(
+                kind, trainer.tune_blend(kind, fits, lattices.layout, motion, _stage("tuning", recipe.tuning))
+            )
             for kind in blend_kinds(fits.colour is not None)
         }
         parent = tuned["beam+colour" if fits.colour else "beam"]
+        birth = _birth(parent.model, fits, settings)
         observe = settings.observe
-        birth = birth_of(
-            parent.model,
-            fits,
-            BirthSettings(observe.range_first_m, observe.range_growth, observe.range_rank, observe.colour_rank),
+        shape = MatcherShape(
+            observe.extra_rank, observe.strip_hidden, observe.ring_hidden, observe.kernel, observe.residual
         )
-        shape = MatcherShape(observe.extra_rank, observe.strip_hidden, observe.ring_hidden, observe.kernel, observe.residual)
         keep(
             LEARNED,
             trainer.train_matcher(

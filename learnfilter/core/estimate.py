@@ -101,8 +101,11 @@ def _take_out(belief: NDArray, grid: PoseGrid, pose: NDArray) -> None:
     row, column = grid.cell_of(pose[0], pose[1])
     h = np.flatnonzero(np.abs(wrap(grid.heading_centres() - pose[2])) <= 2 * NEAR_RAD + 1e-9)
     r0, c0 = max(int(row) - reach, 0), max(int(column) - reach, 0)
-    belief[h[:, None, None], np.arange(r0, min(int(row) + reach + 1, grid.rows))[None, :, None],
-           np.arange(c0, min(int(column) + reach + 1, grid.columns))[None, None, :]] = 0.0
+    belief[
+        h[:, None, None],
+        np.arange(r0, min(int(row) + reach + 1, grid.rows))[None, :, None],
+        np.arange(c0, min(int(column) + reach + 1, grid.columns))[None, None, :],
+    ] = 0.0
 
 
 def entropy(belief: NDArray) -> float:

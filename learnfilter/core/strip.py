@@ -8,7 +8,7 @@ ring bearing, so that turning the sensor by one heading bin is a roll of the rin
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -55,7 +55,8 @@ class RingLayout:
         bearings_per_heading: K; turning by one heading bin rolls the ring by K.
         phase_rad: site angle of ring bearing 0, in [0, 2 pi / P).
         first: ring bearing, at heading bin 0, of strip position 0 (may be negative).
-        source: [W'] raw column that serves each strip position, counter-clockwise; -1 where none does (no evidence).
+        source: [W'] raw column that serves each strip position, counter-clockwise; -1 where
+            none does, which gives no evidence.
     """
 
     bearings: int
@@ -72,6 +73,19 @@ class RingLayout:
     def step_rad(self) -> float:
         return 2 * np.pi / self.bearings
 
+    @property
+    def looks(self) -> int:
+        """Headings at which a strip is scored within one heading bin: two where the ring is fine enough
+        for them to lie a quarter of a bin to either side of its centre, else the centre alone."""
+        return 2 if self.bearings_per_heading % 4 == 0 else 1
+
+    def finer(self) -> RingLayout:
+        """The layout whose heading h' looks as look h' of this one does: bin h owns looks 2 h - 1 and 2 h."""
+        if self.looks == 1:
+            return self
+        per_heading = self.bearings_per_heading
+        return replace(self, bearings_per_heading=per_heading // 2, first=self.first + per_heading // 4)
+
     def ring_angles(self) -> NDArray[np.float64]:
         """[P] site angle of each ring bearing, radians."""
         return self.phase_rad + np.arange(self.bearings, dtype=float) * self.step_rad
@@ -79,6 +93,12 @@ class RingLayout:
     def strip_bearings(self) -> NDArray[np.float64]:
         """[W'] sensor-frame bearing of each strip position, radians."""
         return self.phase_rad + (self.first + np.arange(self.columns, dtype=float)) * self.step_rad
+
+    def look_angles(self) -> NDArray[np.float64]:
+        """[looks*h W'] site angle along which each strip position points at each look."""
+        fine = self.finer()
+        looks = np.arange(fine.bearings // fine.bearings_per_heading)[:, None]
+        return looks * (fine.bearings_per_heading * fine.step_rad) + fine.strip_bearings()
 
     def present(self) -> NDArray[np.bool_]:
         """[W'] whether any raw column serves the position; where none does there is no evidence."""

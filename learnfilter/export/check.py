@@ -51,7 +51,9 @@ def compare(folder: str | Path) -> float:
     return worst
 
 
-def against_torch(folder: str | Path, filter_: Filter, drive: Drive, steps: int | None = None) -> NDArray[np.float64]:
+def against_torch(
+    folder: str | Path, filter_: Filter, drive: Drive, steps: int | None = None
+) -> NDArray[np.float64]:
     """Run the runtime and torch side by side over a drive.
 
     Args:

@@ -39,6 +39,7 @@ def _blend(model: Blend) -> tuple[Facts, Named]:
     parts: Facts = {}
     arrays: Named = {}
     for name, part in model.parts.items():
+        assert isinstance(part, ObservationModel)
         facts, own = robot_model(part)
         parts[name] = {"exponent": float(model.log_exponent[name].detach().exp()), "model": facts}
         arrays |= {f"{name}.{key}": array for key, array in own.items()}

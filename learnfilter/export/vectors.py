@@ -41,16 +41,21 @@ def make_vectors(filter_: Filter, drive: Drive) -> dict[str, NDArray[Any]]:
         raise DriveError("too short for test vectors", file=drive.name, expected=expected, got=len(rows))
     drive = with_gaps(drive, int(rows[len(rows) // 2]))
     steps = list(filtered(filter_, drive, len(rows)))
-    flat = np.stack([step.belief.ravel() for step in steps])
-    top = np.argsort(-flat, axis=1, kind="stable")[:, :TOP]
+    top = np.stack([np.argsort(-step.belief, axis=None, kind="stable")[:TOP] for step in steps])
     whole = np.unique(np.linspace(0, len(steps) - 1, WHOLE).astype(int))
-    given = {"time_s": drive.time_s, "odometry": drive.odometry, "depth_m": drive.depth_m, "rgb": drive.rgb}
+    given: dict[str, NDArray[Any]] = {
+        "time_s": drive.time_s,
+        "odometry": drive.odometry,
+        "depth_m": drive.depth_m,
+    }
+    if drive.rgb is not None:
+        given["rgb"] = drive.rgb
     count = steps[-1].row + 1
     return {
-        **{name: values[:count] for name, values in given.items() if values is not None},
+        **{name: values[:count] for name, values in given.items()},
         **estimates(filter_, drive, steps),
         "top_pose": top.astype(np.int32),
-        "top_belief": np.take_along_axis(flat, top, axis=1),
+        "top_belief": np.stack([step.belief.ravel()[poses] for step, poses in zip(steps, top, strict=True)]),
         "belief": np.stack([steps[step].belief for step in whole]),
         "belief_step": whole,
     }

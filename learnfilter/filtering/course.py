@@ -47,6 +47,21 @@ class Course(NamedTuple):
         return len(self.steps.rows)
 
 
+class Ground(NamedTuple):
+    """A site with what was driven on it.
+
+    Attributes:
+        site: rendered plan.
+        courses: drives; filtering needs their odometry.
+        stills: strips at poses drawn uniformly from the free poses, for the matching stage, with
+            their lattice poses; None where there are none.
+    """
+
+    site: Site
+    courses: tuple[Course, ...]
+    stills: tuple[Strips, Truth] | None = None
+
+
 def truth_of(site: Site, poses: NDArray[np.float64]) -> Truth:
     """Lattice poses of sensor poses [s 3]."""
     cell, heading, own = site.nearest_live(poses)

@@ -115,14 +115,15 @@ def clear_paths(live, shift_r, shift_c):
     rows, columns = live.shape
     out = np.zeros((len(shift_r), rows, columns), np.bool_)
     for i in numba.prange(len(shift_r)):
-        steps = int(np.ceil(max(abs(shift_r[i]), abs(shift_c[i]))))
+        longest = max(abs(shift_r[i]), abs(shift_c[i]))
         for r in range(rows):
             for c in range(columns):
                 clear = live[r, c]
-                for step in range(1, steps):
+                # every cell up to the nearer of the two taps: what comes from the farther one passes it
+                for step in range(1, int(longest) + 1):
                     if clear:
-                        back_r = r - int(np.rint(shift_r[i] * step / steps))
-                        back_c = c - int(np.rint(shift_c[i] * step / steps))
+                        back_r = r - int(np.rint(shift_r[i] * step / longest))
+                        back_c = c - int(np.rint(shift_c[i] * step / longest))
                         inside = 0 <= back_r < rows and 0 <= back_c < columns
                         clear = inside and live[back_r, back_c]
                 out[i, r, c] = clear

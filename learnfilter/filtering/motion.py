@@ -108,7 +108,7 @@ def shift_weights(mean: Tensor, variance: Tensor, offsets: Tensor) -> Tensor:
 
 def _taps(mean: Tensor, variance: Tensor) -> tuple[Tensor, Tensor]:
     """First offset [...] int64 and weights [... k] of the taps that hold a kernel within 4 sigma."""
-    reach = 1 + int(math.ceil(4.0 * float(variance.detach().max().sqrt())))
+    reach = 1 + math.ceil(4.0 * float(variance.detach().max().sqrt()))
     first = mean.detach().round() - reach
     offsets = first.unsqueeze(-1) + torch.arange(2 * reach + 1, dtype=mean.dtype)
     # second differences in float32 are noise of 1e-7 where tails, and the filter's floor, are far smaller
@@ -125,9 +125,7 @@ def _turn(belief: Tensor, mean: Tensor, variance: Tensor) -> Tensor:
     return torch.stack(turned)
 
 
-def predict(
-    belief: Tensor, odometry: Tensor, lattice: Lattice, motion: MotionModel
-) -> tuple[Tensor, Tensor]:
+def predict(belief: Tensor, odometry: Tensor, lattice: Lattice, motion: MotionModel) -> tuple[Tensor, Tensor]:
     """Push the belief through one odometry reading, p(pose_t | strips before t).
 
     Args:
@@ -153,9 +151,15 @@ def predict(
     first_r, weights_r = _taps(shift_r, base + across * direction.cos() ** 2)
     first_c, weights_c = _taps(shift_c, base + across * direction.sin() ** 2)
     moved = shift_planes(
-        belief.flatten(0, 1), first_r.flatten(), first_c.flatten(), weights_r.flatten(0, 1), weights_c.flatten(0, 1)
+        belief.flatten(0, 1),
+        first_r.flatten(),
+        first_c.flatten(),
+        weights_r.flatten(0, 1),
+        weights_c.flatten(0, 1),
     )
-    clear = clear_paths(lattice.live.numpy(), shift_r.detach().flatten().numpy(), shift_c.detach().flatten().numpy())
+    clear = clear_paths(
+        lattice.live.numpy(), shift_r.detach().flatten().numpy(), shift_c.detach().flatten().numpy()
+    )
     moved = (moved * torch.from_numpy(clear)).view_as(belief)
     kept = moved.sum((1, 2, 3))
     uniform = lattice.live / (lattice.live.sum() * len(lattice.headings))

@@ -52,7 +52,9 @@ def weighed_steps(drive: Drive, layout: RingLayout, after_m: float, after_rad: f
             odometry.append(pending)
             pending, travel, turn = np.zeros(3), 0.0, 0.0
     index = np.array(rows)
-    return Steps(index, torch.tensor(np.array(odometry), dtype=torch.float32), lay_strips(drive, layout, index))
+    return Steps(
+        index, torch.tensor(np.array(odometry), dtype=torch.float32), lay_strips(drive, layout, index)
+    )
 
 
 def lay_strips(drive: Drive, layout: RingLayout, rows: NDArray[np.int64]) -> Strips:

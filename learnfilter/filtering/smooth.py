@@ -103,7 +103,9 @@ def smoothed_beliefs(
             yield step, _share(both)[0]
             if step > 0:
                 seen = weigh(FilterState(_share(later), state.log_evidence), log_likelihood(step), lattice)
-                later = live * _carry_back(before.belief, seen.belief, odometry[step, None], lattice, motion, floor)
+                later = live * _carry_back(
+                    before.belief, seen.belief, odometry[step, None], lattice, motion, floor
+                )
 
 
 def _share(positive: Tensor) -> Tensor:
@@ -194,7 +196,11 @@ def _marks(
     for row, marked in known.items():
         if not 0 <= row < len(drive):
             raise DriveError(
-                "no such row", file=drive.name, place="known poses", expected=f"0 to {len(drive) - 1}", got=row
+                "no such row",
+                file=drive.name,
+                place="known poses",
+                expected=f"0 to {len(drive) - 1}",
+                got=row,
             )
         step = int(np.searchsorted(rows, row, side="right")) - 1
         pose = np.asarray(marked, dtype=float)

@@ -151,5 +151,3 @@ def free_range(
     above = np.searchsorted(columns, relative).clip(0, len(columns) - 1)
     below = (np.searchsorted(columns, relative, side="right") - 1).clip(0, len(columns) - 1)
     return np.where(in_view, np.minimum(shown[above], shown[below]), 0.0), in_view
-
-

@@ -10,7 +10,7 @@ from learnfilter.core.scale import RangeScale
 from learnfilter.core.strip import RingLayout
 from learnfilter.observe.contract import ObservationModel, Strips
 from learnfilter.observe.fitting import MixtureFit
-from learnfilter.observe.lookup import smallest_integer, sum_along_rings
+from learnfilter.observe.lookup import ring_steps, smallest_integer, sum_along_rings
 from learnfilter.observe.mixture import log_ratio_table
 from learnfilter.render.site import Site
 
@@ -33,14 +33,10 @@ class BeamModel(ObservationModel):
         """[n p] expected node of each ring bearing."""
         return smallest_integer(expected_class(self.scale, site.range_m, site.unsure), self.scale.nodes + 2)
 
-    def log_likelihood(self, strips: Strips, features: np.ndarray) -> Tensor:
+    def scores(self, strips: Strips, features: np.ndarray) -> Tensor:
         depth = strips.depth_m.numpy()
         rows = self.table[measured_class(self.scale, depth)] * strips.present.numpy()[:, None]
-        headings = self.layout.bearings // self.layout.bearings_per_heading
-        out = sum_along_rings(
-            np.ascontiguousarray(rows, np.float32), features, self.layout.first,
-            self.layout.bearings_per_heading, headings,
-        )
+        out = sum_along_rings(np.ascontiguousarray(rows, np.float32), features, *ring_steps(self.layout))
         return torch.from_numpy(out)
 
 

@@ -7,7 +7,7 @@ Exponents are the only weights of an analytic model and are learned through the 
 from __future__ import annotations
 
 from collections.abc import Mapping
-from typing import Any
+from typing import Any, cast
 
 import torch
 from torch import Tensor, nn
@@ -33,15 +33,15 @@ class Blend(ObservationModel):
         )
 
     def read(self, site: Site) -> dict[str, Any]:
-        return {name: part.read(site) for name, part in self.parts.items()}
+        return {name: self.part(name).read(site) for name in self.parts}
 
-    def part_likelihoods(self, strips: Strips, features: dict[str, Any]) -> dict[str, Tensor]:
-        """[b n h] of each part before its exponent: constants while exponents are tuned."""
-        return {name: part.log_likelihood(strips, features[name]) for name, part in self.parts.items()}
+    def scores(self, strips: Strips, features: dict[str, Any]) -> Tensor:
+        weighed = [
+            self.log_exponent[name].exp() * self.part(name).scores(strips, features[name])
+            for name in self.parts
+        ]
+        return torch.stack(weighed).sum(0)
 
-    def blend(self, parts: Mapping[str, Tensor]) -> Tensor:
-        """Sum the parts under the current exponents."""
-        return sum(self.log_exponent[name].exp() * value for name, value in parts.items())
-
-    def log_likelihood(self, strips: Strips, features: dict[str, Any]) -> Tensor:
-        return self.blend(self.part_likelihoods(strips, features))
+    def part(self, name: str) -> ObservationModel:
+        """One of the models that are summed."""
+        return cast(ObservationModel, self.parts[name])

@@ -20,7 +20,7 @@ from torch import Tensor
 from learnfilter.core.strip import RingLayout
 from learnfilter.observe.contract import ObservationModel, Strips, site_tensors
 from learnfilter.observe.fitting import Pairs
-from learnfilter.observe.lookup import smallest_integer, sum_along_rings
+from learnfilter.observe.lookup import ring_steps, smallest_integer, sum_along_rings
 from learnfilter.render.site import Site
 
 DARK = 0.02  # added before the logarithm: below this a camera's noise hides the colour
@@ -120,16 +120,13 @@ class ColourModel(ObservationModel):
         colours = tensors.palette.numpy()[:-1]
         return smallest_integer(tensors.finish.numpy(), len(colours) + 1), log_colour(colours)
 
-    def log_likelihood(self, strips: Strips, features: tuple[NDArray, NDArray]) -> Tensor:
+    def scores(self, strips: Strips, features: tuple[NDArray, NDArray]) -> Tensor:
         ring, colours = features
         rgb = np.where(strips.present.numpy()[:, None], strips.rgb.numpy(), np.nan)
         x = levelled(log_colour(rgb), self.fit.level_power, self.fit.level)
         evidence = self.fit.weight * kernel(x, colours, self.fit.spread) - log_normaliser(colours, self.fit)
-        evidence = np.where(np.isfinite(x).all(axis=-1)[..., None], evidence, 0.0)
+        seen = np.isfinite(x).all(axis=-1, keepdims=True)
+        evidence = np.where(seen, evidence, 0.0)
         table = np.concatenate([evidence, np.zeros((*evidence.shape[:2], 1))], axis=-1)
-        headings = self.layout.bearings // self.layout.bearings_per_heading
-        out = sum_along_rings(
-            np.ascontiguousarray(table, np.float32), ring, self.layout.first,
-            self.layout.bearings_per_heading, headings,
-        )
+        out = sum_along_rings(np.ascontiguousarray(table, np.float32), ring, *ring_steps(self.layout))
         return torch.from_numpy(out)

@@ -8,6 +8,7 @@ that the evidence there is zero.
 
 from __future__ import annotations
 
+import math
 from typing import Any, NamedTuple
 
 import numpy as np
@@ -34,6 +35,10 @@ class Strips(NamedTuple):
     def at(self, index: Any) -> Strips:
         """Some of the strips, by anything that indexes the first axis."""
         return Strips(self.depth_m[index], self.rgb[index], self.present)
+
+    def without_colour(self) -> Strips:
+        """The same strips from a sensor that sees no colour."""
+        return self._replace(rgb=torch.full_like(self.rgb, torch.nan))
 
 
 class SiteTensors(NamedTuple):
@@ -68,10 +73,22 @@ def site_tensors(site: Site) -> SiteTensors:
     )
 
 
+def pool_looks(scores: Tensor, layout: RingLayout) -> Tensor:
+    """[b n h] log of the mean likelihood over the looks of each heading bin.
+
+    A robot stands anywhere in a bin, so the bin's likelihood is a mean over headings; scoring the centre
+    alone calls a robot at the bin's edge a liar.  Two looks are the two-point midpoint rule.
+    """
+    if layout.looks == 1:
+        return scores
+    return torch.logaddexp(scores[..., 0::2], scores.roll(1, -1)[..., 0::2]) - math.log(2)
+
+
 class ObservationModel(nn.Module):
     """Base of every observation model.
 
-    `read` does what depends on the plan alone, once a site; `log_likelihood` does the rest.
+    `read` does what depends on the plan alone, once a site; `scores` does the rest at every look
+    (`RingLayout.finer`); `log_likelihood` averages the looks of a bin.
     """
 
     layout: RingLayout
@@ -80,9 +97,13 @@ class ObservationModel(nn.Module):
         """Features of a site, to be handed back to `log_likelihood`."""
         raise NotImplementedError
 
-    def log_likelihood(self, strips: Strips, features: Any) -> Tensor:
-        """[b n h] nats, for every live cell and heading, up to a constant a strip."""
+    def scores(self, strips: Strips, features: Any) -> Tensor:
+        """[b n looks*h] nats, for every live cell and look, up to a constant a strip."""
         raise NotImplementedError
+
+    def log_likelihood(self, strips: Strips, features: Any) -> Tensor:
+        """[b n h] nats, for every live cell and heading bin, up to a constant a strip."""
+        return pool_looks(self.scores(strips, features), self.layout)
 
     def forward(self, strips: Strips, site: Site) -> Tensor:
         return self.log_likelihood(strips, self.read(site))

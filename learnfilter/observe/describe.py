@@ -60,8 +60,8 @@ def _rebuild_colour(layout: RingLayout, facts: Facts, tensors: Tensors) -> Colou
 def _describe_blend(model: Blend) -> tuple[Facts, Tensors]:
     facts: Facts = {"parts": {}}
     tensors = {f"exponent.{name}": value.detach().exp() for name, value in model.log_exponent.items()}
-    for name, part in model.parts.items():
-        facts["parts"][name], part_tensors = describe(part)
+    for name in model.parts:
+        facts["parts"][name], part_tensors = describe(model.part(name))
         tensors |= {f"{name}.{key}": value for key, value in part_tensors.items()}
     return facts, tensors
 
@@ -85,7 +85,9 @@ def _rebuild_matcher(layout: RingLayout, facts: Facts, tensors: Tensors) -> Matc
     blank = Birth(
         scale,
         RangeFactors(
-            np.zeros((scale.nodes + 1, range_rank)), np.zeros((scale.nodes + 2, range_rank)), np.zeros(scale.nodes + 2)
+            np.zeros((scale.nodes + 1, range_rank)),
+            np.zeros((scale.nodes + 2, range_rank)),
+            np.zeros(scale.nodes + 2),
         ),
         ColourFactors(
             np.zeros((colour_rank, 3)), np.zeros((colour_rank,) * 2), np.zeros(tensors["background"].shape)

@@ -82,10 +82,10 @@ class EndpointModel(ObservationModel):
     def read(self, site: Site) -> tuple:
         classes = np.rint(np.minimum(site.field_m, FARTHEST_M) / STEP_M).astype(np.uint8)
         corners = site.cells.astype(np.int64) * site.field_scale
-        angles = site.grid.heading_centres()[:, None] + self.layout.strip_bearings()
+        angles = self.layout.look_angles()
         return np.ascontiguousarray(classes), corners, angles, site.grid.cell_m, site.field_scale
 
-    def log_likelihood(self, strips: Strips, features: tuple) -> Tensor:
+    def scores(self, strips: Strips, features: tuple) -> Tensor:
         field, corners, angles, cell_m, scale = features
         depth = strips.depth_m.numpy()
         used = np.isfinite(depth) & strips.present.numpy()

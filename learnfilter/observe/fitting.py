@@ -135,7 +135,9 @@ def _maximise(
     """Parameters that explain the blamed counts best, one at a time (numerical: bins are coarse)."""
     mixture = replace(
         mixture,
-        **dict(zip(("hit_share", "short_share", "none_share", "stray_share"), map(float, shares), strict=True)),
+        **dict(
+            zip(("hit_share", "short_share", "none_share", "stray_share"), map(float, shares), strict=True)
+        ),
     )
 
     def loss(name: str, component: int, log_value: float) -> float:
@@ -144,7 +146,9 @@ def _maximise(
 
     for name, component, low, high in (("hit_spread_m", 0, 0.02, 1.0), ("short_rate_per_m", 1, 0.01, 5.0)):
         best = minimize_scalar(
-            lambda v, n=name, c=component: loss(n, c, v), bounds=(np.log(low), np.log(high)), method="bounded",
+            lambda v, n=name, c=component: loss(n, c, v),
+            bounds=(np.log(low), np.log(high)),
+            method="bounded",
             options={"xatol": 1e-3},
         )
         if best.fun <= loss(name, component, np.log(getattr(mixture, name))):

@@ -10,6 +10,8 @@ import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from learnfilter.core.strip import RingLayout
+
 
 @numba.njit(cache=True, parallel=True, fastmath=True)
 def sum_along_rings(table, ring, first, per_heading, headings):
@@ -66,6 +68,12 @@ def sum_at_end_points(end_row, end_column, used, table, field, cell_row, cell_co
                             total += table[len(table) - 1]
                 out[b, n, h] = total
     return out
+
+
+def ring_steps(layout: RingLayout) -> tuple[int, int, int]:
+    """first, bearings a look and number of looks: the last arguments of `sum_along_rings`."""
+    fine = layout.finer()
+    return fine.first, fine.bearings_per_heading, fine.bearings // fine.bearings_per_heading
 
 
 def smallest_integer(ring: NDArray, classes: int) -> NDArray:

@@ -92,6 +92,14 @@ class Matcher(ObservationModel):
         generator: draws the starting weights.
     """
 
+    measured: Tensor
+    expected: Tensor
+    range_bias: Tensor
+    landmarks: Tensor
+    root: Tensor
+    background: Tensor
+    colour_fit: Tensor
+
     def __init__(self, layout: RingLayout, birth: Birth, shape: MatcherShape, generator: torch.Generator):
         super().__init__()
         self.layout, self.shape, self.scale = layout, shape, birth.scale
@@ -132,6 +140,7 @@ class Matcher(ObservationModel):
             for layer in (self.strip_in, self.strip_mid, self.strip_out, self.ring_in, self.ring_mid):
                 fan = layer.weight[0].numel()
                 layer.weight.normal_(0.0, (2.0 / fan) ** 0.5, generator=generator)
+                assert layer.bias is not None
                 layer.bias.zero_()
             # born silent: the ring's residual and all of the strip's but the extra factors are zero
             self.strip_out.weight[: 2 + known].zero_()
@@ -256,5 +265,5 @@ class Matcher(ObservationModel):
         parts = torch.arange(site.n_cells).split(chunk)
         return torch.cat([self.psi(*self.fixed_psi(tensors.cells(part))) for part in parts])
 
-    def log_likelihood(self, strips: Strips, features: Tensor) -> Tensor:
-        return match(self.phi(strips), features, self.layout)
+    def scores(self, strips: Strips, features: Tensor) -> Tensor:
+        return match(self.phi(strips), features, self.layout.finer())

@@ -1,9 +1,9 @@
 """Run an exported filter with NumPy and safetensors alone.
 
-    from learnfilter.runtime import Localizer, load_bundle
+from learnfilter.runtime import Localizer, load_bundle
 
-    localizer = Localizer(load_bundle("bundle"))
-    estimate = localizer.step(odometry, depth_m, rgb)
+localizer = Localizer(load_bundle("bundle"))
+estimate = localizer.step(odometry, depth_m, rgb)
 """
 
 from learnfilter.runtime.bundle import Bundle, load_bundle

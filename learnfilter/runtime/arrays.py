@@ -33,13 +33,16 @@ class Arrays:
         except (SafetensorError, KeyError, ValueError) as error:
             raise BundleError(f"unreadable arrays ({error})", file=file) from error
 
-    def take(self, name: str, *shape: int | None, dtype: Any = np.float32) -> NDArray[Any]:
+    def take(
+        self, name: str, *shape: int | None, dtype: Any = np.float32, finite: bool = True
+    ) -> NDArray[Any]:
         """Take an array out.
 
         Args:
             name: of the array.
             shape: size of each axis, None for any.
-            dtype: what it is converted to; floats must be finite unless they are converted to integers.
+            dtype: what it is converted to.
+            finite: whether infinity is refused too.
 
         Raises:
             BundleError: it is missing, has another shape or another kind of number, or is not finite.
@@ -60,8 +63,8 @@ class Arrays:
             raise BundleError(
                 "wrong kind of number", file=self.file, place=place, expected=np.dtype(dtype), got=array.dtype
             )
-        if np.isnan(array).any():
-            raise BundleError("not a number", file=self.file, place=place)
+        if np.isnan(array).any() or (finite and np.isinf(array).any()):
+            raise BundleError("not finite", file=self.file, place=place)
         return np.asarray(array, dtype=dtype, order="C")
 
     def under(self, prefix: str) -> Arrays:

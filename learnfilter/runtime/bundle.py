@@ -18,7 +18,8 @@ from learnfilter.core.errors import BundleError
 from learnfilter.core.grid import PoseGrid
 from learnfilter.core.strip import RingLayout, Strip
 from learnfilter.runtime.arrays import Arrays
-from learnfilter.runtime.models import RobotModel, build_model
+from learnfilter.runtime.contract import RobotModel
+from learnfilter.runtime.models import build_model
 from learnfilter.runtime.motion import MotionNoise
 from learnfilter.runtime.schema import hold
 from learnfilter.runtime.site import RobotSite, read_site

@@ -164,8 +164,10 @@ def _motion(odometry: ArrayLike, most_m: float) -> NDArray[np.float64]:
     return motion
 
 
-def _laid(depth_m: ArrayLike, rgb: ArrayLike | None, strip: Strip, layout: RingLayout) -> tuple[Floats, Floats]:
-    """Depth [w'] and linear RGB [w' 3] on ring bearings; what lies outside the sensor's ranges is no return."""
+def _laid(
+    depth_m: ArrayLike, rgb: ArrayLike | None, strip: Strip, layout: RingLayout
+) -> tuple[Floats, Floats]:
+    """Depth [w'] and linear RGB [w' 3] on ring bearings; outside the sensor's ranges nothing came back."""
     depth = _floats("depth_m", depth_m, (strip.columns,))
     _refuse((depth < 0) | np.isinf(depth), "depth_m", "metres, or NaN where nothing came back", depth)
     measured = (depth >= np.float32(strip.min_range_m)) & (depth <= np.float32(strip.max_range_m))
@@ -185,7 +187,7 @@ def _floats(name: str, values: ArrayLike, shape: Sequence[int]) -> NDArray[np.fl
     except (TypeError, ValueError) as error:
         raise StepError("not numbers", place=name, expected=f"floats {shape}") from error
     if array.shape != shape:
-        raise StepError("wrong width", place=name, expected=shape, got=array.shape)
+        raise StepError("wrong width", place=name, expected=str(tuple(shape)), got=array.shape)
     return array
 
 

@@ -1,4 +1,7 @@
-"""The factored matcher as the robot runs it; `observe/matcher.py` explains it and a test holds both together."""
+"""The factored matcher as the robot runs it.
+
+`observe/matcher.py` explains it, and a change there must come here; a test holds both together.
+"""
 
 from __future__ import annotations
 
@@ -11,13 +14,14 @@ from numpy.typing import NDArray
 from learnfilter.core.scale import RangeScale
 from learnfilter.core.strip import RingLayout
 from learnfilter.runtime.arrays import Arrays
+from learnfilter.runtime.contract import RobotModel
 from learnfilter.runtime.layers import Floats, Layer, LayerShape, place
 from learnfilter.runtime.site import RobotSite
 
 CHUNK = 512  # cells whose features are computed at once: more needs memory, fewer is slower
 
 
-class RobotMatcher:
+class RobotMatcher(RobotModel):
     """log-lik(heading h, cell) = sum over columns w of phi[w] . psi[h K + first + w].
 
     Args:
@@ -84,9 +88,9 @@ class RobotMatcher:
 
     # ---- the strip's side --------------------------------------------------------------------------
 
-    def log_likelihood(self, depth_m: Floats, rgb: Floats, features: Floats) -> Floats:
-        """[n h], one matrix product: the strip is rolled, not the rings."""
-        placed = place(self._phi(depth_m, rgb), self.layout)
+    def scores(self, depth_m: Floats, rgb: Floats, features: Floats) -> Floats:
+        """[n looks*h], one matrix product: the strip is rolled, not the rings."""
+        placed = place(self._phi(depth_m, rgb), self.layout.finer())
         return features @ placed.reshape(features.shape[1], -1)
 
     def _phi(self, depth_m: Floats, rgb: Floats) -> Floats:
@@ -101,7 +105,9 @@ class RobotMatcher:
             out = out * present[:, None]
             range_gate = range_gate + self._soft_limit(out[:, 0])
             colour_gate = colour_gate + self._soft_limit(out[:, 1])
-            table_add, colour_add, extra = np.split(out[:, 2:], [range_rank, range_rank + colour_rank], axis=1)
+            table_add, colour_add, extra = np.split(
+                out[:, 2:], [range_rank, range_rank + colour_rank], axis=1
+            )
             table, colour = table + table_add, colour + colour_add * seen[:, None]
         range_share, colour_share = np.exp(range_gate) * present, np.exp(colour_gate) * seen
         weighted = colour * (self.weight * colour_share)[:, None]
@@ -147,7 +153,7 @@ class RobotMatcher:
 
 
 def matcher_layers(facts: Mapping[str, Any]) -> list[LayerShape]:
-    """The network's layers in the order they run: three on the strip, three on the ring; none without residual."""
+    """The layers in the order they run: three on the strip, three on the ring; none without residual."""
     if not facts["residual"]:
         return []
     range_rank, colour_rank, extra = facts["ranks"]

@@ -1,14 +1,13 @@
-"""Observation models as the robot runs them: log p(strip | pose) of every live pose.
+"""Observation models as the robot runs them.
 
-Each mirrors a model of `observe/`, which explains it, without torch: `read` does once what depends on
-the plan alone, `log_likelihood` does the rest for one strip.  Facts come from the manifest, arrays
+Each mirrors a model of `observe/`, which explains it, without torch; a test holds both together.  Facts come from the manifest, arrays
 from the weights; nothing is a constant of this code.
 """
 
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from typing import Any, Protocol
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,6 +15,7 @@ from numpy.typing import NDArray
 from learnfilter.core.scale import RangeScale
 from learnfilter.core.strip import RingLayout, end_offsets
 from learnfilter.runtime.arrays import Arrays
+from learnfilter.runtime.contract import RobotModel
 from learnfilter.runtime.layers import Floats, place
 from learnfilter.runtime.matcher import RobotMatcher
 from learnfilter.runtime.site import RobotSite
@@ -23,17 +23,7 @@ from learnfilter.runtime.site import RobotSite
 Facts = Mapping[str, Any]
 
 
-class RobotModel(Protocol):
-    """What the filter asks of a model."""
-
-    def read(self, site: RobotSite) -> Any:
-        """Features of a site, to be handed back to `log_likelihood`."""
-
-    def log_likelihood(self, depth_m: Floats, rgb: Floats, features: Any) -> Floats:
-        """[n h] nats, up to a constant, of one strip: depth [w] metres, linear RGB [w 3], NaN where none."""
-
-
-class RobotBeam:
+class RobotBeam(RobotModel):
     """A table of evidence, measured bin against expected node, summed over columns."""
 
     def __init__(self, layout: RingLayout, facts: Facts, arrays: Arrays):
@@ -46,7 +36,7 @@ class RobotBeam:
         node = np.where(beyond, self.scale.nodes, self._node(np.where(beyond, 0.0, site.range_m)))
         return np.ascontiguousarray(np.where(site.unsure, self.scale.nodes + 1, node).T)
 
-    def log_likelihood(self, depth_m: Floats, rgb: Floats, features: NDArray[np.int64]) -> Floats:
+    def scores(self, depth_m: Floats, rgb: Floats, features: NDArray[np.int64]) -> Floats:
         measured = np.where(np.isnan(depth_m), self.scale.nodes, self._node(np.nan_to_num(depth_m)))
         rows = self.table[measured] * self.layout.present()[:, None]
         return sum_along_rings(rows, features, self.layout)
@@ -56,7 +46,7 @@ class RobotBeam:
         return np.minimum(np.rint(self.scale.position(clipped)).astype(np.int64), self.scale.nodes - 1)
 
 
-class RobotColour:
+class RobotColour(RobotModel):
     """A Gaussian kernel between a column's log colour and the finish's, less its normaliser."""
 
     def __init__(self, layout: RingLayout, facts: Facts, arrays: Arrays):
@@ -71,7 +61,7 @@ class RobotColour:
         finish = np.where(site.finish < 0, len(colours), site.finish).T
         return np.ascontiguousarray(finish, np.int64), colours, normaliser
 
-    def log_likelihood(self, depth_m: Floats, rgb: Floats, features: Any) -> Floats:
+    def scores(self, depth_m: Floats, rgb: Floats, features: Any) -> Floats:
         finish, colours, normaliser = features
         seen = np.isfinite(rgb).all(axis=1) & self.layout.present()
         x = np.log(np.maximum(np.nan_to_num(rgb), 0.0) + self.facts["dark"])
@@ -86,7 +76,7 @@ class RobotColour:
         return np.exp(-0.5 * square / self.facts["spread"] ** 2)
 
 
-class RobotEndpoint:
+class RobotEndpoint(RobotModel):
     """A table of evidence over the distance from a column's end to the nearest surface."""
 
     def __init__(self, layout: RingLayout, facts: Facts, arrays: Arrays):
@@ -100,13 +90,15 @@ class RobotEndpoint:
         margin = int(np.ceil(self.max_range_m * site.field_scale / site.grid.cell_m)) + site.field_scale
         field = np.pad(classes, margin, constant_values=farthest)
         corners = site.cells * site.field_scale + margin
-        angles = site.grid.heading_centres()[:, None] + self.layout.strip_bearings()
+        angles = self.layout.look_angles()
         return field, np.ravel_multi_index(corners.T, field.shape), angles, site.grid.cell_m, site.field_scale
 
-    def log_likelihood(self, depth_m: Floats, rgb: Floats, features: Any) -> Floats:
+    def scores(self, depth_m: Floats, rgb: Floats, features: Any) -> Floats:
         field, corner, angles, cell_m, scale = features
-        evidence, used = self.table[field].ravel(), np.flatnonzero(np.isfinite(depth_m) & self.layout.present())
-        rows, columns = end_offsets(np.minimum(depth_m[used], self.max_range_m), angles[:, used], cell_m, scale)
+        evidence = self.table[field].ravel()
+        used = np.isfinite(depth_m) & self.layout.present()
+        reach_m = np.minimum(depth_m[used], self.max_range_m)
+        rows, columns = end_offsets(reach_m, angles[:, used], cell_m, scale)
         offsets = rows * field.shape[1] + columns
         out = np.zeros((len(offsets), len(corner)), np.float32)
         for heading, ends in zip(out, offsets, strict=True):
@@ -115,10 +107,11 @@ class RobotEndpoint:
         return out.T
 
 
-class RobotBlend:
+class RobotBlend(RobotModel):
     """Sum over parts of exponent x log-likelihood."""
 
     def __init__(self, layout: RingLayout, facts: Facts, arrays: Arrays):
+        self.layout = layout
         self.parts = {
             name: (np.float32(part["exponent"]), build_model(layout, part["model"], arrays.under(name)))
             for name, part in facts["parts"].items()
@@ -128,9 +121,9 @@ class RobotBlend:
         """Features of every part."""
         return {name: model.read(site) for name, (_, model) in self.parts.items()}
 
-    def log_likelihood(self, depth_m: Floats, rgb: Floats, features: dict[str, Any]) -> Floats:
+    def scores(self, depth_m: Floats, rgb: Floats, features: dict[str, Any]) -> Floats:
         return sum(
-            (exponent * model.log_likelihood(depth_m, rgb, features[name]))
+            (exponent * model.scores(depth_m, rgb, features[name]))
             for name, (exponent, model) in self.parts.items()
         )  # type: ignore[return-value]  # the schema asks for at least one part
 
@@ -151,8 +144,8 @@ def build_model(layout: RingLayout, model: Facts, arrays: Arrays) -> RobotModel:
 
 
 def sum_along_rings(rows: Floats, ring: NDArray[np.int64], layout: RingLayout) -> Floats:
-    """[n h] sum over the strip's columns of `rows` [w e] at the class [p n] of the bearing each looks at."""
-    placed = place(rows, layout)
+    """[n looks*h] sum over columns of `rows` [w e] at the class [p n] of the bearing each looks at."""
+    placed = place(rows, layout.finer())
     out = np.zeros((ring.shape[1], placed.shape[2]), np.float32)
     for table, classes in zip(placed, ring, strict=True):
         out += table[classes]

@@ -84,12 +84,12 @@ def predict(
     return sum(turned, start=np.zeros_like(moved))
 
 
-def _taps(
-    mean: NDArray[np.floating], variance: NDArray[np.floating]
-) -> tuple[NDArray[np.int64], Floats]:
+def _taps(mean: NDArray[np.floating], variance: NDArray[np.floating]) -> tuple[NDArray[np.int64], Floats]:
     """First offset [i] and weights [i k] of the taps that hold each kernel within 4 sigma."""
     reach = 1 + math.ceil(4.0 * math.sqrt(float(variance.max())))
     first = np.rint(mean) - reach
+    # second differences in float32 are noise of 1e-7 where tails, and the filter's floor, are far smaller
+    mean, variance = mean.astype(np.float64), variance.astype(np.float64)
     weights = shift_weights(mean, variance, first[:, None] + np.arange(2 * reach + 1)).clip(min=0)
     return first.astype(np.int64), (weights / weights.sum(axis=1, keepdims=True)).astype(np.float32)
 
@@ -98,7 +98,6 @@ def shift_weights(
     mean: NDArray[np.floating], variance: NDArray[np.floating], offsets: NDArray[np.floating]
 ) -> NDArray[np.float64]:
     """Weights [i k] of integer offsets [i k] for shifts of `mean` cells [i] with `variance` cells^2 [i]."""
-    mean, variance = np.asarray(mean, np.float64), np.asarray(variance, np.float64)
     rest = variance - _interpolation_variance(mean, np.maximum(variance - 1 / 6, 0.0))
     spread = np.sqrt(SOFTNESS * np.logaddexp(0.0, rest / SOFTNESS) + LEAST_VARIANCE)[:, None]
 
@@ -112,7 +111,7 @@ def shift_weights(
 
 
 def _interpolation_variance(
-    mean: NDArray[np.float64], variance: NDArray[np.float64]
+    mean: NDArray[np.floating], variance: NDArray[np.floating]
 ) -> NDArray[np.float64]:
     """Variance that linear interpolation adds to a Gaussian, cells^2 (first harmonics of f(1 - f))."""
     harmonics = (
@@ -141,9 +140,9 @@ def clear_path(live: NDArray[np.bool_], shift_r: float, shift_c: float) -> NDArr
     """[r c] whether the straight way into each cell, back along a shift in cells, stays on live cells."""
     rows, columns = live.shape
     clear = live.copy()
-    steps = math.ceil(max(abs(shift_r), abs(shift_c)))
-    for step in range(1, steps):
-        r, c = round(shift_r * step / steps), round(shift_c * step / steps)
+    longest = max(abs(shift_r), abs(shift_c))
+    for step in range(1, int(longest) + 1):
+        r, c = round(shift_r * step / longest), round(shift_c * step / longest)
         behind = np.zeros_like(live)
         to_r, to_c = (slice(max(0, s), max(0, n + min(0, s))) for s, n in ((r, rows), (c, columns)))
         from_r, from_c = (slice(max(0, -s), max(0, n + min(0, -s))) for s, n in ((r, rows), (c, columns)))

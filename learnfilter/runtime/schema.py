@@ -69,7 +69,11 @@ def _hold_members(value: dict[str, Any], schema: Mapping[str, Any], file: Path, 
     least, most = schema.get("minProperties", 0), schema.get("maxProperties", math.inf)
     if not least <= len(value) <= most:
         raise BundleError(
-            "wrong number of members", file=file, place=place, expected=f"{least} to {most}", got=sorted(value)
+            "wrong number of members",
+            file=file,
+            place=place,
+            expected=f"{least} to {most}",
+            got=sorted(value),
         )
     known, others = schema.get("properties", {}), schema.get("additionalProperties", {})
     for name, member in value.items():

@@ -59,7 +59,7 @@ def read_site(grid: PoseGrid, layout: RingLayout, field_scale: int, arrays: Arra
         grid,
         layout,
         cells,
-        arrays.take("range_m", *rings),
+        arrays.take("range_m", *rings, finite=False),
         arrays.take("unsure", *rings, dtype=np.bool_),
         arrays.take("finish", *rings, dtype=np.int16),
         arrays.take("palette", None, 3),

@@ -81,9 +81,8 @@ class RingComparison:
             table = _against_background(ranges, often * (node != unsure), node == unsure)
             table += _against_background(self._colours(rgb, colours), often, np.isnan(colours[:, 0]))
             table *= self.exponent(site) * layout.present()[:, None]
-            return _along_rings(
-                table.astype(np.float32), ring, first, layout.bearings_per_heading, headings
-            )
+            strips_last = np.ascontiguousarray(table.transpose(1, 2, 0), dtype=np.float32)
+            return _along_rings(strips_last, ring, first, layout.bearings_per_heading, headings)
 
         return evidence
 
@@ -117,17 +116,23 @@ def _against_background(
 
 @njit(cache=True, parallel=True, fastmath=True)
 def _along_rings(table, ring, first, per_heading, headings):
-    """out[b n h] = sum over w of table[b w, ring[n, (h per_heading + first + w) mod p]]."""
-    strips, columns, _ = table.shape
+    """out[b n h] = sum over w of table[w, ring[n, (h per_heading + first + w) mod p], b].
+
+    Strips come last in the table, so that one look-up serves all of them.
+    """
+    columns, _, strips = table.shape
     cells, bearings = ring.shape
     out = np.zeros((strips, cells, headings), np.float32)
     for n in prange(cells):
         twice = np.concatenate((ring[n], ring[n]))
-        for b in range(strips):
-            for h in range(headings):
-                start = (h * per_heading + first) % bearings
-                total = np.float32(0)
-                for w in range(columns):
-                    total += table[b, w, twice[start + w]]
-                out[b, n, h] = total
+        total = np.empty(strips, np.float32)
+        for h in range(headings):
+            start = (h * per_heading + first) % bearings
+            total[:] = 0
+            for w in range(columns):
+                entry = table[w, twice[start + w]]
+                for b in range(strips):
+                    total[b] += entry[b]
+            for b in range(strips):
+                out[b, n, h] = total[b]
     return out

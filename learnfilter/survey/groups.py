@@ -83,29 +83,51 @@ def find_groups(
         if lost[number] <= 0:
             break
         own, samples = np.flatnonzero(group_of_link == number), linked[group_of_sample == number]
-        poses = _poses(site, looks.cell[links.sample[own]], looks.heading[links.sample[own]])
-        twins = _poses(site, links.cell[own], links.heading[own])
-        tried = [
-            (_telling_move(site, evidence, np.stack([poses[i], twins[i]]), roads, margin_nats, rng), i)
-            for i in _typical(poses, twins, links.gap_nats[own], site.grid.cell_m)
-        ]
-        move_m, best = max(tried, key=lambda each: each[0])
+        typical, move_m = _hardest(site, evidence, looks, links, own, roads, margin_nats, rng)
         cells = np.flatnonzero(label[patch] == number)
-        alike = np.bincount(links.sample[own])[samples]
+        weight = looks.weight[samples]
         groups.append(
             Group(
                 cells=cells,
                 area_m2=len(cells) * site.grid.cell_m**2,
                 areas=_areas(site, cells),
-                fold=1 + int(np.median(alike)),
-                located=float(np.average(looks.located[samples], weights=looks.weight[samples])),
-                share=float(looks.weight[samples].sum()),
-                pair=np.stack([poses[best], twins[best]]),
-                gap_nats=float(links.gap_nats[own][best]),
+                fold=1 + int(np.median(np.bincount(links.sample[own])[samples])),
+                located=float(np.average(looks.located[samples], weights=weight)),
+                share=float(weight.sum()),
+                pair=np.stack(_ends(site, looks, links, np.array([typical])))[:, 0],
+                gap_nats=float(links.gap_nats[typical]),
                 move_m=move_m,
             )
         )
     return tuple(groups)
+
+
+def _ends(
+    site: Site, looks: Looks, links: Links, which: Indices
+) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """[k 3] poses at either end of some links."""
+    sample = links.sample[which]
+    here = _poses(site, looks.cell[sample], looks.heading[sample])
+    return here, _poses(site, links.cell[which], links.heading[which])
+
+
+def _hardest(
+    site: Site,
+    evidence: Evidence,
+    looks: Looks,
+    links: Links,
+    own: Indices,
+    roads: csr_array,
+    margin_nats: float,
+    rng: np.random.Generator,
+) -> tuple[int, float]:
+    """Of a group's typical links the one that needs the longest move, and that move."""
+    poses, twins = _ends(site, looks, links, own)
+    tried = []
+    for i in _typical(poses, twins, links.gap_nats[own], site.grid.cell_m):
+        pair = np.stack([poses[i], twins[i]])
+        tried.append((int(own[i]), _telling_move(site, evidence, pair, roads, margin_nats, rng)))
+    return max(tried, key=lambda each: each[1])
 
 
 def _typical(
@@ -139,9 +161,10 @@ def _areas(site: Site, cells: Indices) -> tuple[tuple[float, float, float], ...]
     plane[tuple(site.cells[cells].T)] = True
     parts, count = ndimage.label(plane, np.ones((3, 3)))
     part = parts[tuple(site.cells[cells].T)]
-    place = _poses(site, cells, np.zeros(len(cells), int))
+    x, y, _ = _poses(site, cells, np.zeros(len(cells), int)).T
+    cell_m2 = site.grid.cell_m**2
     areas = [
-        (*map(float, place[part == p, :2].mean(axis=0)), float((part == p).sum()) * site.grid.cell_m**2)
+        (float(x[part == p].mean()), float(y[part == p].mean()), float((part == p).sum()) * cell_m2)
         for p in range(1, count + 1)
     ]
     return tuple(sorted(areas, key=lambda area: -area[2]))
@@ -185,9 +208,7 @@ def _telling_move(
     return float("inf")
 
 
-def _probes(
-    away: NDArray[np.float64], cell_m: float, rng: np.random.Generator
-) -> list[tuple[float, int]]:
+def _probes(away: NDArray[np.float64], cell_m: float, rng: np.random.Generator) -> list[tuple[float, int]]:
     """(distance, live cell) of the places to try, the nearest first."""
     reach = away[np.isfinite(away)].max()
     probes = [(0.0, int(away.argmin()))]

@@ -27,7 +27,8 @@ from learnfilter.survey.views import Indices, Links, Looks, Surroundings, predic
 FAR_M, FAR_RAD = 1.0, np.radians(30.0)
 MOST_ALIKE = 24  # look-alikes written down for one pose; the rest of the mass is kept as one number
 HEADINGS_SAMPLED = 4  # for one cell of a sampled site: more cells tell more than more headings
-BATCH = 8  # strips weighed at once: [8 n h] is the survey's memory
+MOST_AT_ONCE = 8_000_000  # log-likelihoods held at once: the survey's memory, 4 bytes each
+MOST_STRIPS = 64  # weighed at once on a small site: their tables take memory too
 
 
 @dataclass(frozen=True, eq=False)
@@ -149,8 +150,9 @@ def _weighed(
     site: Site, evidence: Evidence, cell: Indices, heading: Indices
 ) -> Iterator[tuple[int, NDArray[np.floating]]]:
     """Yield each pose's number with the evidence [n h] of the strip predicted there."""
-    for first in range(0, len(cell), BATCH):
-        part = slice(first, first + BATCH)
+    batch = min(max(MOST_AT_ONCE // (site.n_cells * site.grid.headings), 1), MOST_STRIPS)
+    for first in range(0, len(cell), batch):
+        part = slice(first, first + batch)
         nats = evidence(*predicted_strips(site, cell[part], heading[part]))
         check("evidence", nats, "b n h", b=len(cell[part]), n=site.n_cells, h=site.grid.headings)
         yield from enumerate(nats, first)
@@ -183,7 +185,7 @@ def _look(
     left = np.where(nats >= own - margin_nats, nats, -np.inf)
     here = around.within(cell, heading, FAR_M, FAR_RAD)
     left[here] = -np.inf
-    own_mass = float(mass[here].sum())
+    own_mass = max(float(mass[here].sum()), 1e-30)  # none is left where evidence is surest of elsewhere
     mass[here] = 0.0
     links = []
     for _ in range(MOST_ALIKE):

@@ -88,6 +88,8 @@ def advise(
     if nats_a_column <= 0:
         raise ConfigError("paint tells this sensor nothing", place="survey", expected="a sensor with colour")
     pieces, feature = _pieces(plan)
+    if not len(pieces):
+        return ()
     painting = _Painting.of(survey, site, _faces(site, pieces))
     chosen: list[Marker] = []
     for _ in range(count):
@@ -186,12 +188,12 @@ class _Painting:
         before = self.told().astype(int)
         apart = self.own != self.other  # a face in the same column of both changes neither
         rows, faces, changes = [], [], []
-        for side, painted, after in (
-            (self.own, self.own_painted, _tells(True, self.other_painted, self.known)),
-            (self.other, self.other_painted, _tells(self.own_painted, True, self.known)),
+        for side, after in (
+            (self.own, _tells(True, self.other_painted, self.known)),
+            (self.other, _tells(self.own_painted, True, self.known)),
         ):
             change = after.astype(int) - before
-            row, column = np.nonzero(apart & (side >= 0) & ~painted & (change != 0))
+            row, column = np.nonzero(apart & (side >= 0) & (change != 0))
             rows.append(row)
             faces.append(side[row, column])
             changes.append(change[row, column])
@@ -209,12 +211,12 @@ def _elsewhere(survey: Survey, ratio: NDArray[np.float64]) -> NDArray[np.float64
 
 def _located(survey: Survey, ratio: NDArray[np.float64]) -> NDArray[np.float64]:
     """[s] posterior mass at the true pose for mass ratios of the links [l]."""
-    return survey.looks.located * (1 + _elsewhere(survey, survey.links.ratio)) / (1 + _elsewhere(survey, ratio))
+    return (
+        survey.looks.located * (1 + _elsewhere(survey, survey.links.ratio)) / (1 + _elsewhere(survey, ratio))
+    )
 
 
-def _gains(
-    survey: Survey, painting: _Painting, nats_a_column: float, faces: int
-) -> NDArray[np.float64]:
+def _gains(survey: Survey, painting: _Painting, nats_a_column: float, faces: int) -> NDArray[np.float64]:
     """[faces] what painting one more face adds to the mean mass at the true pose."""
     ratio = survey.links.ratio * np.exp(-nats_a_column * painting.told().sum(axis=1))
     link, face, change = painting.changes()
@@ -227,4 +229,4 @@ def _gains(
     before = 1 + _elsewhere(survey, ratio)[sample]
     after = before + np.bincount(which, added, len(pairs))
     now = (survey.looks.weight * _located(survey, ratio))[sample]
-    return np.bincount(face, now * (before / after - 1), faces)
+    return np.bincount(face, now * (before / after - 1), faces).astype(float)

@@ -93,7 +93,7 @@ class Surroundings:
     def of(cls, site: Site) -> Surroundings:
         return cls(site, site.index_of())
 
-    def within(self, cell: int, heading: int, reach_m: float, reach_rad: float) -> tuple[Indices, Indices]:
+    def within(self, cell: int, heading: int, reach_m: float, reach_rad: float) -> tuple[Indices, ...]:
         """Live cells and heading bins of the poses that near, ready to index [n h] arrays."""
         grid = self.site.grid
         row, column = self.site.cells[cell]

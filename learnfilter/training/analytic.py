@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from learnfilter.core.errors import ConfigError
 from learnfilter.core.scale import RangeScale
 from learnfilter.core.strip import RingLayout
-from learnfilter.filtering.course import sample_of
+from learnfilter.filtering.course import Ground, sample_of
 from learnfilter.observe.beam import BeamModel
 from learnfilter.observe.blend import Blend
 from learnfilter.observe.colour import ColourFit, ColourModel, fit_colour, log_colour
@@ -22,7 +22,6 @@ from learnfilter.observe.factors import factor_colour, factor_range
 from learnfilter.observe.fitting import MixtureFit, fit_mixture, gather_pairs
 from learnfilter.observe.matcher import Birth
 from learnfilter.observe.mixture import RangeMixture
-from learnfilter.training.samples import Ground
 
 # Nodes of the table that is looked up, 5 cm at zero: halving it changes no figure we have seen.
 FINE_FIRST_M, FINE_GROWTH = 0.05, 0.02
@@ -96,10 +95,10 @@ class BirthSettings:
         range_rank, colour_rank: features kept; zero leaves the analytic start out.
     """
 
-    first_m: float = 0.15
-    growth: float = 0.06
-    range_rank: int = 12
-    colour_rank: int = 8
+    first_m: float = 0.05
+    growth: float = 0.02
+    range_rank: int = 20
+    colour_rank: int = 10
 
 
 def birth_of(tuned: Blend, fits: Fits, settings: BirthSettings) -> Birth:
@@ -110,7 +109,7 @@ def birth_of(tuned: Blend, fits: Fits, settings: BirthSettings) -> Birth:
         np.rint(scale.position(np.minimum(fits.ranges, scale.max_range_m))).clip(0, scale.nodes - 1),
         scale.nodes,
     ).astype(int)
-    weight = np.bincount(node, minlength=scale.nodes + 1) + 1.0
+    weight = np.bincount(node, minlength=scale.nodes + 1).astype(np.float64) + 1.0
     coarse = MixtureFit(fits.mixture.mixture, weight, ())
     exponents = {name: float(value.detach().exp()) for name, value in tuned.log_exponent.items()}
     colour = fits.colour if "colour" in exponents else None

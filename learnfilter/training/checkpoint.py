@@ -25,7 +25,11 @@ def save_tensors(path: Path, tensors: dict[str, Tensor], facts: dict[str, Any]) 
     """Write tensors and facts whole or not at all; the bytes depend on their values alone."""
     text = json.dumps({"schema": SCHEMA, **facts}, sort_keys=True)
     with whole_file(path) as beside:
-        save_file({k: tensors[k].detach().contiguous() for k in sorted(tensors)}, beside, metadata={"learnfilter": text})
+        save_file(
+            {k: tensors[k].detach().contiguous() for k in sorted(tensors)},
+            beside,
+            metadata={"learnfilter": text},
+        )
 
 
 def load_tensors(path: Path) -> tuple[dict[str, Tensor], dict[str, Any]]:
@@ -41,20 +45,28 @@ def load_tensors(path: Path) -> tuple[dict[str, Tensor], dict[str, Any]]:
     except Exception as error:
         raise InputError("cannot be read as tensors of ours", file=path, got=error) from error
     if facts["schema"] > SCHEMA:
-        raise InputError("newer than this program", file=path, expected=f"schema <= {SCHEMA}", got=facts["schema"])
+        raise InputError(
+            "newer than this program", file=path, expected=f"schema <= {SCHEMA}", got=facts["schema"]
+        )
     return tensors, facts
 
 
 def pack(modules: dict[str, nn.Module], optimiser: torch.optim.Optimizer | None) -> dict[str, Tensor]:
     """Parameters of modules and moments of their optimiser, under flat names."""
-    tensors = {f"{name}/{key}": value for name, module in modules.items() for key, value in module.state_dict().items()}
+    tensors = {
+        f"{name}/{key}": value
+        for name, module in modules.items()
+        for key, value in module.state_dict().items()
+    }
     if optimiser is not None:
         for number, state in optimiser.state_dict()["state"].items():
             tensors |= {f"optimiser/{number}/{key}": torch.as_tensor(value) for key, value in state.items()}
     return tensors
 
 
-def unpack(tensors: dict[str, Tensor], modules: dict[str, nn.Module], optimiser: torch.optim.Optimizer | None) -> None:
+def unpack(
+    tensors: dict[str, Tensor], modules: dict[str, nn.Module], optimiser: torch.optim.Optimizer | None
+) -> None:
     """Put back what `pack` took, in place."""
     for name, module in modules.items():
         prefix = f"{name}/"

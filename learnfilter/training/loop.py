@@ -98,7 +98,7 @@ def run_stage(
         settings: see StageSettings.
         modules: name -> module whose parameters are trained.
         loss_at: iteration -> loss; all it draws must come from a stream named by the iteration, and
-            it may call backward itself on parts and return a detached total (see `accumulate`).
+            it may call backward itself on parts and return a detached total.
         validate: scores the current weights.
         folder: holds the stage's checkpoint and best weights.
         log: receives losses, scores and learning rate.
@@ -108,8 +108,17 @@ def run_stage(
         return StageResult(0, 0, math.nan, [])
     parameters = [p for m in modules.values() for p in m.parameters() if p.requires_grad]
     optimiser = torch.optim.Adam(parameters, lr=settings.learning_rate)
-    checkpoint, best_path = folder / f"{settings.name}.safetensors", folder / f"{settings.name}-best.safetensors"
-    first, history, best_at, best = 0, [], 0, math.inf
+    checkpoint, best_path = (
+        folder / f"{settings.name}.safetensors",
+        folder / f"{settings.name}-best.safetensors",
+    )
+    history: list[tuple[int, float, float]] = []
+    first, best_at, best = 0, 0, math.inf
+
+    def keep(done: int) -> None:
+        facts = {"iteration": done, "best_iteration": best_at, "best_score": best, "history": history}
+        save_tensors(checkpoint, pack(modules, optimiser), facts)
+
     if checkpoint.exists():
         tensors, facts = load_tensors(checkpoint)
         unpack(tensors, modules, optimiser)
@@ -118,6 +127,7 @@ def run_stage(
     else:
         best = validate().score
         save_tensors(best_path, pack(modules, None), {"iteration": 0})
+        keep(0)
     total, since = 0.0, 0
     for iteration in range(first, settings.iterations):
         if _stale(history, best_at, settings):
@@ -139,8 +149,7 @@ def run_stage(
                 best, best_at = result.score, done
                 save_tensors(best_path, pack(modules, None), {"iteration": done})
             _record(log, settings, iteration, total / since, result)
-            facts = {"iteration": done, "best_iteration": best_at, "best_score": best, "history": history}
-            save_tensors(checkpoint, pack(modules, optimiser), facts)
+            keep(done)
             total, since = 0.0, 0
         tick(done, settings.iterations, f"{settings.name}: validation {best:.3f} at {best_at}")
     unpack(load_tensors(best_path)[0], modules, None)

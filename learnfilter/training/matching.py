@@ -18,7 +18,6 @@ from torch.nn import functional as F
 from learnfilter.filtering.course import Truth
 from learnfilter.observe.contract import Strips, site_tensors
 from learnfilter.observe.matcher import Matcher
-from learnfilter.observe.product import match
 from learnfilter.render.site import Site
 
 
@@ -50,7 +49,7 @@ def matching_loss(
     extra = rng.choice(site.n_cells, size=min(decoys, site.n_cells), replace=False)
     cells = np.unique(np.concatenate([around[around >= 0], extra]))
     psi = model.psi(*model.fixed_psi(site_tensors(site).cells(torch.from_numpy(cells))))
-    scores = match(model.phi(all_strips.at(batch)), psi, model.layout)
+    scores = model.log_likelihood(all_strips.at(batch), psi)
     weights = torch.from_numpy(log_weights(cells, around, site.n_cells)).to(scores.dtype)
     target = torch.from_numpy(np.searchsorted(cells, own)) * scores.shape[2] + truth.heading[batch]
     return F.cross_entropy((scores + weights[:, :, None]).flatten(1), target)

@@ -13,13 +13,14 @@ from torch import Tensor, nn
 
 from learnfilter.core.seeds import stream
 from learnfilter.core.strip import RingLayout
+from learnfilter.filtering.course import Ground
 from learnfilter.filtering.motion import MotionModel, MotionSettings
-from learnfilter.observe.contract import ObservationModel, Strips
+from learnfilter.observe.contract import ObservationModel
 from learnfilter.observe.matcher import Birth, Matcher, MatcherShape
 from learnfilter.training.analytic import Fits, make_blend
 from learnfilter.training.loop import Log, StageResult, StageSettings, run_stage
 from learnfilter.training.matching import matching_loss
-from learnfilter.training.samples import Ground, stretch
+from learnfilter.training.samples import stretch
 from learnfilter.training.through_filter import filter_loss, step_losses
 from learnfilter.training.validation import validate
 
@@ -62,11 +63,6 @@ class Trained(NamedTuple):
     stages: dict[str, StageResult]
 
 
-def without_colour(strips: Strips) -> Strips:
-    """The same strips from a sensor that sees no colour."""
-    return strips._replace(rgb=torch.full_like(strips.rgb, torch.nan))
-
-
 class Trainer:
     """Training and validation grounds with what every stage shares.
 
@@ -93,7 +89,9 @@ class Trainer:
         self.filtering, self.matching = filtering, matching
         self.seed, self.folder, self.log, self.tick = seed, folder, log, tick
 
-    def tune_blend(self, kind: str, fits: Fits, layout: RingLayout, motion: MotionSettings, stage: StageSettings) -> Trained:
+    def tune_blend(
+        self, kind: str, fits: Fits, layout: RingLayout, motion: MotionSettings, stage: StageSettings
+    ) -> Trained:
         """Fit exponents and motion spread of an analytic blend through the filter."""
         model, moves = make_blend(kind, layout, fits), MotionModel(motion)
         stage = replace(stage, name=f"{stage.name}-{kind}")
@@ -122,7 +120,7 @@ class Trainer:
             assert ground.stills is not None
             strips, truth = ground.stills
             if rng.random() < self.filtering.hide_colour:
-                strips = without_colour(strips)
+                strips = strips.without_colour()
             return matching_loss(
                 model, ground.site, (strips, truth), rng, self.matching.strips, self.matching.decoys
             )
@@ -138,7 +136,7 @@ class Trainer:
             length = int(rng.choice(self.filtering.lengths))
             odometry, strips, cell, heading = stretch(ground.courses, length, rng)
             if rng.random() < hide_colour:
-                strips = without_colour(strips)
+                strips = strips.without_colour()
             losses = step_losses(
                 model, motion, ground.site, odometry, strips, cell, heading, self.filtering.floor
             )
@@ -174,5 +172,3 @@ def parameters(model: ObservationModel) -> int:
 def blend_kinds(colour: bool) -> tuple[str, ...]:
     """The analytic models that are always tuned: the opponents at full strength."""
     return ("beam", "endpoint", "beam+colour", "endpoint+colour") if colour else ("beam", "endpoint")
-
-

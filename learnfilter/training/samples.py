@@ -1,32 +1,15 @@
-"""What training draws from: sites with their courses and stills."""
+"""Stretches of courses, drawn for one iteration."""
 
 from __future__ import annotations
 
 from collections.abc import Sequence
-from typing import NamedTuple
 
 import numpy as np
 import torch
 from torch import Tensor
 
-from learnfilter.filtering.course import Course, Truth
+from learnfilter.filtering.course import Course
 from learnfilter.observe.contract import Strips
-from learnfilter.render.site import Site
-
-
-class Ground(NamedTuple):
-    """A site with what was driven on it.
-
-    Attributes:
-        site: rendered plan.
-        courses: drives; filtering needs their odometry.
-        stills: strips at poses drawn uniformly from the free poses, for the matching stage, with
-            their lattice poses; None where there are none.
-    """
-
-    site: Site
-    courses: tuple[Course, ...]
-    stills: tuple[Strips, Truth] | None = None
 
 
 def stretch(

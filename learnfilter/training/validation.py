@@ -8,11 +8,11 @@ import numpy as np
 import torch
 
 from learnfilter.drives.metrics import located
+from learnfilter.filtering.course import Ground
 from learnfilter.filtering.motion import MotionModel
 from learnfilter.filtering.trace import trace
 from learnfilter.observe.contract import ObservationModel
 from learnfilter.training.loop import Validation
-from learnfilter.training.samples import Ground
 
 
 def validate(

@@ -6,6 +6,7 @@ from functools import cache
 import numpy as np
 import torch
 
+from learnfilter.core.scale import RangeScale
 from learnfilter.core.strip import Strip, even_strip, lay_on_ring
 from learnfilter.observe.beam import BeamModel
 from learnfilter.observe.blend import Blend
@@ -17,13 +18,14 @@ from learnfilter.observe.fitting import MixtureFit
 from learnfilter.observe.matcher import Birth, Matcher, MatcherShape
 from learnfilter.observe.mixture import RangeMixture
 from learnfilter.plan.floorplan import DOOR, NO_FINISH, SHUT, UNKNOWN, WALL, Finish, FloorPlan
-from learnfilter.core.scale import RangeScale
 from learnfilter.render import grid_for, render_site
 
 MAX_RANGE_M = 6.0
 HEADINGS, PER_HEADING = 16, 2
 CIRCLE = Strip(even_strip(-170.0, 11.25, 32), 0.1, MAX_RANGE_M)
 LAYOUT = lay_on_ring(CIRCLE, HEADINGS, PER_HEADING)
+# the same ring under half as many headings: fine enough for two looks within each
+TWO_LOOKS = lay_on_ring(CIRCLE, HEADINGS // 2, 2 * PER_HEADING)
 FINE, COARSE = RangeScale(0.05, 0.02, MAX_RANGE_M), RangeScale(0.15, 0.06, MAX_RANGE_M)
 FINISHES = (Finish("chalk", (0.9, 0.9, 0.88)), Finish("brick", (0.6, 0.2, 0.15)))
 
@@ -41,20 +43,25 @@ def small_plan():
         (1.5, 4, 4, 4, WALL, SHUT, NO_FINISH),
         (4, 4, 4, 2.5, WALL, SHUT, 1),
     ]
-    segments, kind, state, finish = np.array([r[:4] for r in rows], float), *zip(*(r[4:] for r in rows), strict=True)
-    return FloorPlan(segments, kind, state, finish, np.arange(len(rows)), FINISHES, seed=(1.0, 1.0), name="small")
+    segments, kind, state, finish = (
+        np.array([r[:4] for r in rows], float),
+        *zip(*(r[4:] for r in rows), strict=True),
+    )
+    return FloorPlan(
+        segments, kind, state, finish, np.arange(len(rows)), FINISHES, seed=(1.0, 1.0), name="small"
+    )
 
 
 def render(plan, layout=LAYOUT, cell_m=0.5):
     """A plan on the lattice all small tests use."""
-    grid = grid_for(plan, HEADINGS, cell_m)
+    grid = grid_for(plan, layout.bearings // layout.bearings_per_heading, cell_m)
     return render_site(plan, layout, grid, robot_radius_m=0.2, max_range_m=MAX_RANGE_M)
 
 
 @cache
-def small_site():
+def small_site(layout=LAYOUT):
     """The small plan rendered for the full-circle strip."""
-    return render(small_plan())
+    return render(small_plan(), layout)
 
 
 def strips(seed=0, count=3, layout=LAYOUT, missing=0.1):

@@ -10,7 +10,7 @@ from torch.testing import assert_close
 from learnfilter.core.strip import Strip, even_strip, lay_on_ring
 from learnfilter.plan.readers import read_plan
 from tests.contracts import small
-from tests.contracts.small import LAYOUT, MODELS, PER_HEADING, altered, score, small_site, strips
+from tests.contracts.small import LAYOUT, MODELS, PER_HEADING, TWO_LOOKS, altered, score, small_site, strips
 
 TOY_WORLDS = Path(__file__).resolve().parents[2] / "toy_worlds"
 FLOAT32 = {"rtol": 1e-4, "atol": 1e-3}  # sums of 32 float32 terms of up to 10 nats, in any order
@@ -20,6 +20,7 @@ RING_READERS = sorted(set(MODELS) - {"endpoint"})
 ANALYTIC = sorted(set(MODELS) - {"trained matcher"})
 
 every_model = pytest.mark.parametrize("name", sorted(MODELS))
+both_layouts = pytest.mark.parametrize("layout", [LAYOUT, TWO_LOOKS], ids=["one look", "two looks"])
 
 
 def roll_rings(site, by):
@@ -28,27 +29,40 @@ def roll_rings(site, by):
     return altered(site, **rings)
 
 
+@both_layouts
 @pytest.mark.parametrize("name", RING_READERS)
-def test_turning_what_is_around_turns_the_answer(name):
+def test_turning_what_is_around_turns_the_answer(name, layout):
     """Everything about a cell one heading bin further left: the same strip, one heading further on."""
-    model = MODELS[name]()
-    turned = score(model, strips(), roll_rings(small_site(), PER_HEADING))
-    assert_close(turned, score(model, strips(), small_site()).roll(1, dims=2), **FLOAT32)
+    model, site = MODELS[name](layout), small_site(layout)
+    turned = score(model, strips(), roll_rings(site, layout.bearings_per_heading))
+    assert_close(turned, score(model, strips(), site).roll(1, dims=2), **FLOAT32)
+
+
+@both_layouts
+@pytest.mark.parametrize("name", ANALYTIC)
+def test_turning_the_robot_rolls_the_heading_axis(name, layout):
+    """A full circle of columns seen one heading bin further left belongs to one heading more.
+
+    (The residual's convolutions do not close the circle of a strip, so a trained matcher is let off.)
+    """
+    model, site, seen, by = MODELS[name](layout), small_site(layout), strips(), layout.bearings_per_heading
+    turned = seen._replace(depth_m=seen.depth_m.roll(-by, dims=1), rgb=seen.rgb.roll(-by, dims=1))
+    assert_close(score(model, turned, site), score(model, seen, site).roll(1, dims=2), **FLOAT32)
 
 
 @pytest.mark.parametrize("name", ANALYTIC)
-def test_turning_the_robot_rolls_the_heading_axis(name):
-    """A full circle of columns seen one heading bin further left belongs to one heading more.
-
-    The end-point model rounds end points to sub-cells: in float32 a few lie on a border.
-    """
-    model, seen = MODELS[name](), strips()
-    turned = seen._replace(
-        depth_m=seen.depth_m.roll(-PER_HEADING, dims=1), rgb=seen.rgb.roll(-PER_HEADING, dims=1)
-    )
-    actual, expected = score(model, turned, small_site()), score(model, seen, small_site()).roll(1, dims=2)
-    same = torch.isclose(actual, expected, **FLOAT32).double().mean()
-    assert same > (0.999 if name == "endpoint" else 1 - 1e-9)
+def test_a_heading_bins_likelihood_is_the_mean_over_its_looks(name):
+    """Two looks a quarter of a bin to either side of the centre: likelihoods of the strip as it would have
+    been laid one ring bearing further right or left, under a centre alone, averaged.  (One look a bin, of a
+    layout of 16 headings, shows what a strip scores at ring bearings two apart; a strip rolled by one
+    column fills the gap.)"""
+    seen, headings = strips(), np.arange(0, 16, 2)
+    one = MODELS[name](LAYOUT)
+    right = seen._replace(depth_m=seen.depth_m.roll(1, dims=1), rgb=seen.rgb.roll(1, dims=1))
+    left = seen._replace(depth_m=seen.depth_m.roll(-1, dims=1), rgb=seen.rgb.roll(-1, dims=1))
+    looks = [score(one, turned, small_site())[:, :, headings] for turned in (right, left)]
+    expected = torch.logaddexp(*looks) - np.log(2)
+    assert_close(score(MODELS[name](TWO_LOOKS), seen, small_site(TWO_LOOKS)), expected, **FLOAT32)
 
 
 @every_model
@@ -81,6 +95,15 @@ def test_blind_columns_add_nothing(name):
     left = torch.arange(LAYOUT.columns) < 11
     halves = [score(model, seen._replace(present=half), small_site()) for half in (left, ~left)]
     assert_close(halves[0] + halves[1], score(model, seen, small_site()), **FLOAT32)
+
+
+@pytest.mark.parametrize("name", ANALYTIC)
+def test_columns_without_colour_are_no_evidence_of_colour(name):
+    """A sensor that saw no colour scores a plan with finishes like one without."""
+    model, seen = MODELS[name](), strips()
+    seen = seen._replace(rgb=torch.full_like(seen.rgb, torch.nan))
+    silent = altered(small_site(), finish=np.full_like(small_site().finish, -1))
+    assert_close(score(model, seen, small_site()), score(model, seen, silent), rtol=0, atol=0)
 
 
 @every_model
@@ -142,12 +165,9 @@ def test_twins_in_a_square_room_get_equal_scores(name):
     of any pose apart (group invariance)."""
     site = small.render(read_plan(TOY_WORLDS / "square_room.geojson"))
     scores = score(MODELS[name](), strips(), site)
-    gaps = []
     for cell, heading in np.ndindex(site.n_cells, site.grid.headings):
         images = torch.stack([scores[:, c, h] for c, h in twins(site, cell, heading)])
-        gaps.append(float((images - images[0]).abs().max()))
-    # float32 may put a reading or an end point on the other side of a bin's border: a few poses of 576
-    assert np.mean(np.array(gaps) < 1e-2) > 0.99
+        assert_close(images, images[:1].expand_as(images), **FLOAT32)
 
 
 @every_model
@@ -162,7 +182,8 @@ def test_a_mirror_image_is_no_twin(name):
     bearing = (heading * PER_HEADING + layout.first + np.arange(layout.columns)) % layout.bearings
     colours, _ = site.colour()
     seen = strips(count=1, layout=layout, missing=0)._replace(
-        depth_m=torch.tensor(site.range_m[cell, bearing])[None], rgb=torch.tensor(colours[cell, bearing])[None]
+        depth_m=torch.tensor(site.range_m[cell, bearing])[None],
+        rgb=torch.tensor(colours[cell, bearing])[None],
     )
     scores = score(MODELS[name](layout), seen, site)[0]
     assert abs(float(scores[cell, heading] - scores[mirrored, other])) > 0.05

@@ -59,7 +59,8 @@ def test_headings_are_averaged_across_the_cut():
 
 
 @pytest.mark.parametrize(
-    ("offset_m", "offset_deg", "expected"), [(0.0, 0, 1.0), (0.5, 0, 1.0), (0.51, 0, 0.0), (0, 15, 1.0), (0, 15.1, 0.0)]
+    ("offset_m", "offset_deg", "expected"),
+    [(0.0, 0, 1.0), (0.5, 0, 1.0), (0.51, 0, 0.0), (0, 15, 1.0), (0, 15.1, 0.0)],
 )
 def test_near_means_half_a_metre_and_fifteen_degrees(offset_m, offset_deg, expected):
     """Both limits belong to it; the definition of a lock says so."""

@@ -24,7 +24,9 @@ def test_a_killed_writer_leaves_the_old_file(tmp_path):
     """A real process, killed after it wrote half."""
     path = tmp_path / "summary.json"
     path.write_text("old")
-    with subprocess.Popen([sys.executable, "-c", WRITE_AND_HANG, str(path)], stdout=subprocess.PIPE) as writer:
+    with subprocess.Popen(
+        [sys.executable, "-c", WRITE_AND_HANG, str(path)], stdout=subprocess.PIPE
+    ) as writer:
         assert writer.stdout.readline() == b"written\n"
         os.kill(writer.pid, signal.SIGKILL)
     assert path.read_text() == "old"

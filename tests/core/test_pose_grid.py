@@ -33,7 +33,9 @@ def test_points_beyond_the_lattice_keep_their_place():
     assert_array_equal(GRID.cell_of(-1.01, 1.99), (-1, -1))
 
 
-@pytest.mark.parametrize(("degrees", "expected"), [(0, 0), (22, 0), (23, 1), (359, 0), (-44, 7), (180, 4), (-180, 4)])
+@pytest.mark.parametrize(
+    ("degrees", "expected"), [(0, 0), (22, 0), (23, 1), (359, 0), (-44, 7), (180, 4), (-180, 4)]
+)
 def test_an_angle_goes_to_the_nearest_heading_bin(degrees, expected):
     """Bins reach half a step to both sides and wrap."""
     assert GRID.heading_of(np.radians(degrees)) == expected

@@ -56,7 +56,9 @@ def test_compose_follows_the_books_moves(start, moves, end):
 def test_between_has_the_books_travel_and_turn(start, moves, end):
     """Its length is the travel and its turn the sum of both turns."""
     forward, left, turn = between(start, end)
-    assert_allclose([np.hypot(forward, left), np.cos(turn)], [moves[1], np.cos(moves[0] + moves[2])], atol=1e-12)
+    assert_allclose(
+        [np.hypot(forward, left), np.cos(turn)], [moves[1], np.cos(moves[0] + moves[2])], atol=1e-12
+    )
 
 
 def test_the_shift_happens_under_the_old_heading():

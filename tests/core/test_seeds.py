@@ -13,7 +13,9 @@ def test_a_stream_never_changes():
     import struct
 
     words = struct.unpack("<4I", hashlib.sha256(b"rehearse/site/3").digest()[:16])
-    expected = np.random.Generator(np.random.PCG64(np.random.SeedSequence([7, *words]))).integers(2**32, size=4)
+    expected = np.random.Generator(np.random.PCG64(np.random.SeedSequence([7, *words]))).integers(
+        2**32, size=4
+    )
     assert_array_equal(stream(7, "rehearse", "site", 3).integers(2**32, size=4), expected)
 
 

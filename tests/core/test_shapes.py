@@ -15,7 +15,8 @@ def test_letters_are_bound_to_sizes(make):
 
 
 @pytest.mark.parametrize(
-    ("shape", "axes", "sizes"), [((2, 3), "h r c", {}), ((2, 3), "h", {}), ((2, 3), "h r", {"r": 4}), ((2, 3), "a a", {})]
+    ("shape", "axes", "sizes"),
+    [((2, 3), "h r c", {}), ((2, 3), "h", {}), ((2, 3), "h r", {"r": 4}), ((2, 3), "a a", {})],
 )
 def test_a_wrong_rank_or_a_clash_is_an_error_with_the_arrays_name(shape, axes, sizes):
     """Too few axes, too many, another size, one letter for two sizes."""

@@ -12,10 +12,11 @@ evenly in one pose bin, are
 
 import numpy as np
 import pytest
+import torch
 from numpy.testing import assert_allclose
 
-from halls import at, lattice, motion, odometry
 from learnfilter.filtering.motion import MotionSettings, predict
+from tests.filtering.halls import at, lattice, motion, odometry
 from tests.oracles import particle_drive
 
 STEPS, STEP_M, CELL_M, SIZE = 20, 0.25, 0.25, 48
@@ -28,9 +29,10 @@ def drives(request):
     headings = request.param
     hall = lattice(headings, SIZE, SIZE, cell_m=CELL_M)
     belief = at(hall, 0, START_ROW, START_COLUMN)
-    for _ in range(STEPS):
-        belief, _ = predict(belief, odometry(STEP_M), hall, motion(MotionSettings()))
-    marginal = belief.detach()[0].sum(0).numpy()
+    with torch.no_grad():
+        for _ in range(STEPS):
+            belief, _ = predict(belief, odometry(STEP_M), hall, motion(MotionSettings()))
+    marginal = belief[0].sum(0).numpy()
     x, y = (np.arange(SIZE) - START_COLUMN) * CELL_M, (np.arange(SIZE) - START_ROW) * CELL_M
     mean = np.array([marginal.sum(0) @ x, marginal.sum(1) @ y])
     spread = np.sqrt([marginal.sum(0) @ x**2 - mean[0] ** 2, marginal.sum(1) @ y**2 - mean[1] ** 2])

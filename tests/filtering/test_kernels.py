@@ -50,7 +50,9 @@ def test_every_plane_has_its_own_taps():
     offsets = torch.tensor([-1, 0, 2])
     ones = torch.ones(3, 1, dtype=torch.float64)
     out = shift_planes(PLANES, torch.zeros(3, dtype=torch.int64), offsets, ones, ones).numpy()
-    expected = [ndimage.shift(p, (0, o), order=0) for p, o in zip(PLANES.numpy(), offsets.tolist(), strict=True)]
+    expected = [
+        ndimage.shift(p, (0, o), order=0) for p, o in zip(PLANES.numpy(), offsets.tolist(), strict=True)
+    ]
     assert_allclose(out, expected)
 
 
@@ -67,13 +69,12 @@ def test_gradients_are_those_of_finite_differences():
 
 
 def test_a_clear_way_meets_live_cells_only():
-    """A wall in column 3; four cells to the right: cells 4 to 6 would have been reached through it, cell 7
-    starts right of it, the first columns have no start inside."""
+    """A wall in column 3; four and a half cells to the right: cells 5 to 7 would be reached through it (7
+    from 2 and from the wall itself), cell 8 from beside it; ways to cells before 5 start off the lattice."""
     live = np.ones((1, 9), bool)
     live[0, 3] = False
-    clear = clear_paths(live, np.array([0.0]), np.array([4.0]))[0, 0]
-    inner = np.arange(9) >= 4  # where the way would start on the lattice
-    assert_array_equal(clear[inner], [False, False, False, True, True])
+    clear = clear_paths(live, np.array([0.0]), np.array([4.5]))[0, 0]
+    assert_array_equal(clear, [False] * 8 + [True])
 
 
 @pytest.mark.parametrize("shift", [(3.0, 0.0), (0.0, -2.6), (2.4, 4.0)])

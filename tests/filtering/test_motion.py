@@ -12,8 +12,8 @@ from numpy.testing import assert_allclose
 from torch.autograd import gradcheck
 from torch.testing import assert_close
 
-from halls import NO_NOISE, at, drawn, lattice, motion, odometry
 from learnfilter.filtering.motion import MotionSettings, predict, shift_weights
+from tests.filtering.halls import NO_NOISE, at, drawn, lattice, motion, odometry
 
 MEANS, VARIANCES = np.linspace(-2, 3, 51), np.append(0, np.geomspace(1e-3, 3, 30))
 OFFSETS = torch.arange(-14.0, 15.0, dtype=torch.float64)
@@ -50,7 +50,7 @@ def test_kernels_spread_by_the_noise_or_by_what_interpolation_adds():
 
 def test_noise_wider_than_interpolation_is_exact():
     """From 0.35 cells^2 on, interpolation is taken off to within 0.002."""
-    mean, variance, _, _, spread = moments()
+    _, variance, _, _, spread = moments()
     wide = variance > 0.35
     assert_allclose(spread[wide], variance[wide], atol=0.002)
 
@@ -63,7 +63,7 @@ def test_repeated_sub_cell_shifts_smear_by_a_known_amount(fraction):
     belief = at(hall, 0, 1, 6)
     for _ in range(steps):
         belief, _ = predict(belief, odometry(fraction * 0.25), hall, motion())
-    along = belief.sum((0, 1, 2)).numpy()
+    along = belief.detach().sum((0, 1, 2)).numpy()
     mean = along @ np.arange(40)
     # the heading leaks into neighbouring bins at each step, 1.4 degrees apart: cosines of a few degrees
     assert_allclose(mean, 6 + steps * fraction, rtol=1e-3)
@@ -166,15 +166,18 @@ def test_turn_noise_has_the_spread_asked_for():
 
 
 @pytest.mark.parametrize("cells", [1, 1.5, 2, 2.7, 3, 4, 5.5, 7])
-@pytest.mark.parametrize("angle", [0, 1, 2])
-def test_long_steps_do_not_tunnel(cells, angle):
-    """A wall one cell thick across the hall: nothing arrives behind it, straight or slanting."""
+@pytest.mark.parametrize("angle_deg", [0, 22.5, 45])
+def test_long_steps_do_not_tunnel(cells, angle_deg):
+    """A wall one cell thick across the hall: nothing arrives behind it, straight or slanting.
+
+    A hundredth may: softness widens kernels by a fraction of a cell, and a heading of 5.6 degrees blurs
+    long steps.  (What noise puts beyond a wall is not checked cell by cell.)
+    """
     walls = [(r, 10) for r in range(21)]
-    hall = lattice(16, 21, 21, walls)
-    start = torch.zeros(1, 16, 21, 21, dtype=torch.float64)
-    start[0, angle, :, :10] = 1 / 210
+    hall = lattice(64, 21, 21, walls)
+    start = torch.zeros(1, 64, 21, 21, dtype=torch.float64)
+    start[0, round(angle_deg / 5.625), :, :10] = 1 / 210
     belief, _ = predict(start, odometry(cells * 0.25), hall, motion())
-    # softness widens a kernel by a fraction of a cell: at whole-cell steps a hundredth leaks, no more
     assert float(belief.detach()[..., 11:].sum()) < 0.01
 
 
@@ -215,4 +218,4 @@ def test_gradients_reach_beliefs_and_spreads():
         model.log_spread = log_spread
         return predict(belief, odometry(0.3, 0.1, 0.4), hall, model)
 
-    assert gradcheck(moved, (drawn(hall).requires_grad_(), spreads))
+    assert gradcheck(moved, (drawn(hall).requires_grad_(), spreads), fast_mode=True)

@@ -1,5 +1,7 @@
 """Which strips are weighed, under which motion, and how a drive is cut to a course."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 import torch
@@ -11,17 +13,19 @@ from learnfilter.core.strip import Strip, even_strip, lay_on_ring
 from learnfilter.drives.drive import Drive
 from learnfilter.filtering.course import course_of
 from learnfilter.filtering.rollout import weighed_steps
-from tests.contracts.small import small_site
+from tests.contracts.small import CIRCLE, small_site
 
 MOUNT = (0.2, 0.0, np.pi / 2)
 
 
-def drive(odometry, mount=(0.0, 0.0, 0.0), reference=None, rgb=None, step_deg=11.25):
+def drive(odometry, mount=(0.0, 0.0, 0.0), rgb=None, step_deg=11.25):
     """Rows with the given motions; depths count rows and columns so that strips can be told apart."""
     strip = Strip(even_strip(-22.5 * np.sign(step_deg), step_deg, 5), has_colour=rgb is not None, mount=mount)
     rows = len(odometry)
     depth = np.arange(rows)[:, None] + np.arange(5) / 10
-    return Drive(np.arange(rows, dtype=float), np.asarray(odometry, float), depth.astype(np.float32), rgb, reference, strip)
+    return Drive(
+        np.arange(rows, dtype=float), np.asarray(odometry, float), depth.astype(np.float32), rgb, None, strip
+    )
 
 
 def steps(drive, after_m=0.2, after_rad=0.3):
@@ -82,12 +86,17 @@ def test_a_sensor_without_colour_sees_none():
 
 
 def on_small_site(reference, mount=(0.0, 0.0, 0.0)):
-    made = drive(np.zeros((len(reference), 3)), mount=mount, reference=np.asarray(reference, float))
+    """A course of rows that are all weighed, at these robot poses on the small site."""
+    rows = len(reference)
+    strip = replace(CIRCLE, has_colour=False, mount=mount)
+    depth = np.ones((rows, strip.columns), np.float32)
+    reference = np.asarray(reference, float)
+    made = Drive(np.arange(rows, dtype=float), np.zeros((rows, 3)), depth, None, reference, strip)
     return course_of(made, small_site(), 0.0, 0.0)
 
 
 def test_truth_is_where_the_sensor_was():
-    """The robot at (1.1, 1.1) facing up with the sensor 0.4 m ahead: the sensor at (1.1, 1.5), looking left."""
+    """The robot at (1.1, 1.1) facing up, the sensor 0.4 m ahead: the sensor at (1.1, 1.5), looking left."""
     site = small_site()
     truth = on_small_site([(1.1, 1.1, np.pi / 2)], mount=(0.4, 0.0, np.pi / 2)).truth
     assert_array_equal(site.cells[truth.cell[0]], np.stack(site.grid.cell_of(1.1, 1.5)))
@@ -95,13 +104,13 @@ def test_truth_is_where_the_sensor_was():
 
 
 def test_a_pose_off_the_live_cells_counts_as_the_nearest_one_and_is_counted():
-    """5 cm from the left wall no cell is live; the first live column stands for it."""
+    """20 cm beyond the left wall no cell is live; the first live column stands for it."""
     site = small_site()
-    truth = on_small_site([(0.05, 1.2, 0.0), (1.2, 1.2, 0.0)]).truth
+    truth = on_small_site([(-0.2, 1.2, 0.0), (1.2, 1.2, 0.0)]).truth
     assert_array_equal(truth.own, [False, True])
     row, column = site.cells[truth.cell[0]]
     assert column == np.flatnonzero(site.live[row])[0]
-    assert row == site.grid.cell_of(0.05, 1.2)[0]
+    assert row == site.grid.cell_of(-0.2, 1.2)[0]
 
 
 def test_a_missing_reference_pose_is_named():

@@ -95,7 +95,7 @@ def test_agrees_with_matrices_where_the_robot_drives_and_turns_among_walls(floor
     """Rabiner's recursions with dense matrices; what a motion loses into walls is lost for good."""
     rng = np.random.default_rng(5)
     where, motion = lattice(4, [[True, True, False], [True, True, True]]), MotionModel().double()
-    odometry = rng.uniform(-0.6, 0.6, (7, 3)) + [0.3, 0, 0]
+    odometry = rng.uniform([-0.3, -0.6, -0.6], [0.9, 0.6, 0.6], (7, 3))
     likelihood = rng.uniform(0.01, 1, (7, 5, 4)) ** 3
     smoothed = all_smoothed(where, odometry, likelihood, MotionSettings(), floor)
 
@@ -165,7 +165,7 @@ class Nearness(ObservationModel):
 def office():
     """(site, true poses, drive without reference) along the toy office, odometry off by 2 %."""
     plan = read_plan("toy_worlds/lindqvist_office.geojson")
-    strip = Strip(even_strip(-90, 10, 19), has_colour=False, mount=(0.1, 0.0, 0.0))
+    strip = Strip(even_strip(-90, 10, 19), has_colour=False, mount=(0.3, 0.0, 0.6))
     layout = lay_on_ring(strip, 36, 1)
     site = render_site(
         plan, layout, grid_for(plan, 36, 0.25), robot_radius_m=0.2, max_range_m=8.0, windows="solid"
@@ -178,9 +178,7 @@ def office():
     poses = np.array(poses)
     sensor = compose(poses, np.array(strip.mount))
     angles = np.array(strip.bearings_rad)
-    depth = np.concatenate(
-        [cast_rings(plan, p[:1], p[1:2], p[2] + angles, 8.0, "solid")[0] for p in sensor]
-    )
+    depth = np.concatenate([cast_rings(plan, p[:1], p[1:2], p[2] + angles, 8.0, "solid")[0] for p in sensor])
     noisy = motions * (1 + rng.normal(0, 0.02, motions.shape))
     drive = Drive(
         np.arange(len(poses)) * 0.2, noisy, np.where(np.isfinite(depth), depth, np.nan), None, None, strip

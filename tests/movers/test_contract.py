@@ -27,7 +27,9 @@ def clear(depth, bearings, motion=AHEAD, **footprint):
 @settings(max_examples=200, deadline=None, derandomize=True)
 def test_a_clear_motion_meets_nothing_that_the_strip_shows(seed, forward, left, mount):
     """The swept disc, built by shapely, stays off the line through all returns."""
-    depth = np.random.default_rng(seed).uniform(0.3, 2.0) + np.random.default_rng(seed + 1).exponential(0.2, 91)
+    depth = np.random.default_rng(seed).uniform(0.3, 2.0) + np.random.default_rng(seed + 1).exponential(
+        0.2, 91
+    )
     motion = Motion(forward, left, 0.3)
     if clear(depth, SCANNER, motion, mount=mount):
         returns = np.stack([depth * np.cos(SCANNER + mount[2]), depth * np.sin(SCANNER + mount[2])], 1)

@@ -30,7 +30,8 @@ def test_the_error_falls_with_rank():
     table = log_ratio_table(COARSE, FIT.mixture, FIT.expected_weight)
     weight_z, weight_r = background()
     errors = [
-        weight_z @ (factored(rank) - table)[:, :-1] ** 2 @ weight_r for rank in (2, 4, 8, 12, 16, COARSE.nodes + 1)
+        weight_z @ (factored(rank) - table)[:, :-1] ** 2 @ weight_r
+        for rank in (2, 4, 8, 12, 16, COARSE.nodes + 1)
     ]
     assert (np.diff(errors) < 0).all()
     assert errors[-1] < 1e-10

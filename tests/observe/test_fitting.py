@@ -18,7 +18,9 @@ def pairs_of(measured, expected):
     """Depth-only pairs."""
     measured = np.asarray(measured, float)
     nothing = np.full((len(measured), 3), np.nan)
-    return Pairs(measured, np.broadcast_to(expected, measured.shape), nothing, nothing, np.zeros(len(measured), int))
+    return Pairs(
+        measured, np.broadcast_to(expected, measured.shape), nothing, nothing, np.zeros(len(measured), int)
+    )
 
 
 def drawn(count, seed=0):
@@ -82,7 +84,9 @@ def test_known_parameters_are_found_again():
 
 def test_weights_count_expected_ranges():
     """One count a node is added, so that no background is zero."""
-    weight = fit_mixture(pairs_of([4, 4, np.nan], [4.0, 4.0, np.inf]), SCALE, RangeMixture(), 1).expected_weight
+    weight = fit_mixture(
+        pairs_of([4, 4, np.nan], [4.0, 4.0, np.inf]), SCALE, RangeMixture(), 1
+    ).expected_weight
     assert_allclose(np.sort(weight)[-2:], [2, 3])
     assert weight[-1] == 2
 

@@ -8,9 +8,15 @@ from scipy.integrate import quad
 
 from learnfilter.core.errors import ConfigError
 from learnfilter.core.scale import RangeScale
-from learnfilter.observe.mixture import RangeMixture, bin_masses, component_cdfs, component_masses, log_ratio_table
+from learnfilter.observe.mixture import (
+    RangeMixture,
+    bin_masses,
+    component_cdfs,
+    component_masses,
+    log_ratio_table,
+)
 
-# Parameters of the worked values: z_max 10 m, hit 0.5 m wide, short 0.3 a metre (Thrun, Burgard, Fox 2005, 6.3)
+# Of the worked values: z_max 10 m, hit 0.5 m wide, short 0.3 a metre (Thrun, Burgard, Fox 2005, 6.3)
 MIXTURE = RangeMixture(0.7, 0.1, 0.05, 0.15, hit_spread_m=0.5, hit_growth_per_m=0.0, short_rate_per_m=0.3)
 MAX_M = 10.0
 METRES = RangeScale(1.0, 1e-9, MAX_M)  # growth this small leaves nodes a metre apart to 1e-8
@@ -124,7 +130,9 @@ def test_an_unsure_ray_has_no_evidence():
     assert not ratio_table()[0][:, -1].any()
 
 
-@pytest.mark.parametrize("members", [{"hit_share": 0.9}, {"hit_share": -0.1, "short_share": 0.94}, {"hit_spread_m": 0.0}])
+@pytest.mark.parametrize(
+    "members", [{"hit_share": 0.9}, {"hit_share": -0.1, "short_share": 0.94}, {"hit_spread_m": 0.0}]
+)
 def test_impossible_parameters_are_refused(members):
     """Shares that do not sum to one or are negative; a spread of nothing."""
     with pytest.raises(ConfigError):

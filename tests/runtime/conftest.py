@@ -1,26 +1,13 @@
-"""A bundle of every kind, written once."""
+"""A bundle of every kind, written once, and a copy to damage."""
 
 import shutil
-from collections.abc import Callable
 from pathlib import Path
 
 import pytest
 
-from learnfilter.export import write_bundle
-from tests.shipping import PROVENANCE, filter_of, rehearsed
+from tests.shipping import shipped
 
-
-@pytest.fixture(scope="session")
-def shipped(tmp_path_factory) -> Callable[[str], Path]:
-    """Folder of the bundle of a kind; not to be changed."""
-    top, drive = tmp_path_factory.mktemp("shipped"), rehearsed()[1]
-
-    def folder(kind: str) -> Path:
-        if not (top / kind).exists():
-            write_bundle(top / kind, filter_of(kind), drive, PROVENANCE)
-        return top / kind
-
-    return folder
+__all__ = ["bundle", "shipped"]
 
 
 @pytest.fixture

@@ -24,9 +24,7 @@ def layer(shape: LayerShape, weight: np.ndarray, bias: np.ndarray) -> Layer:
 def test_a_layer_is_torchs_convolution(edges, mode, kernel, then):
     """Same weights, same edges, same answer."""
     rng = np.random.default_rng(0)
-    x, weight, bias = (
-        rng.normal(size=s).astype(np.float32) for s in ((2, 12, 7), (4, 7, kernel), (4,))
-    )
+    x, weight, bias = (rng.normal(size=s).astype(np.float32) for s in ((2, 12, 7), (4, 7, kernel), (4,)))
     padded = F.pad(torch.tensor(x).transpose(1, 2), (kernel // 2, kernel // 2), mode=mode)
     expected = F.conv1d(padded, torch.tensor(weight), torch.tensor(bias)).transpose(1, 2)
     expected = torch.relu(expected) if then == "relu" else expected

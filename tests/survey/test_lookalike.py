@@ -6,6 +6,9 @@ import pytest
 from learnfilter.core.errors import ConfigError, ShapeError
 from learnfilter.core.poses import wrap
 from learnfilter.core.seeds import stream
+from learnfilter.core.strip import Strip, even_strip, lay_on_ring
+from learnfilter.plan import read_plan
+from learnfilter.render import grid_for, render_site
 from learnfilter.survey import RingComparison, survey_site
 from tests.survey.rooms import room
 
@@ -20,7 +23,9 @@ def survey(name, columns=ALL_ROUND, comparison=SHARP, **options):
     return site, survey_site(site, comparison.of(site), **options)
 
 
-@pytest.mark.parametrize(("name", "twins"), [("square_room", 3), ("oblong_room", 1), ("square_room_red_wall", 0)])
+@pytest.mark.parametrize(
+    ("name", "twins"), [("square_room", 3), ("oblong_room", 1), ("square_room_red_wall", 0)]
+)
 def test_every_pose_has_the_twins_of_its_room_s_symmetry(name, twins):
     """Rotation group of the square: 4; of the oblong: 2; of one red wall: 1 (toy_worlds/README.md)."""
     np.testing.assert_array_equal(survey(name)[1].alike, twins)
@@ -130,3 +135,13 @@ def test_a_budget_of_nothing_is_refused():
     """Nothing would be surveyed."""
     with pytest.raises(ConfigError):
         survey("square_room", budget=0)
+
+
+def test_a_real_hotel_corridor_has_many_look_alikes(shared_data):
+    """WRLD's Westport House, floor 3 (CC BY 4.0): like rooms along a corridor, on a plan without colours."""
+    plan = read_plan(shared_data / "plans" / "westport-house-floor-3.geojson")
+    layout = lay_on_ring(Strip(even_strip(-43.6, 2.8125, 32)), 32, 4)
+    site = render_site(plan, layout, grid_for(plan, 32, 0.5), robot_radius_m=0.25, max_range_m=6.0)
+    found = survey_site(site, RingComparison().of(site), budget=64, most_groups=1, rng=stream(0))
+    assert found.alike_share > 0.8
+    assert len(found.groups[0].areas) > 5  # in many rooms, not in one

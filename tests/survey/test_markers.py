@@ -1,5 +1,8 @@
 """Marker advice, against surveys of sites painted in every way."""
 
+from dataclasses import replace
+from itertools import pairwise
+
 import numpy as np
 import pytest
 
@@ -7,6 +10,7 @@ from learnfilter.core.colour import srgb_to_linear
 from learnfilter.core.errors import ConfigError
 from learnfilter.core.seeds import stream
 from learnfilter.survey import Marker, RingComparison, advise, contrasting, paint, survey_site
+from learnfilter.survey.markers import _Painting
 from tests.survey.rooms import plan_of, room
 
 WIDE = RingComparison()
@@ -27,11 +31,13 @@ def advice(name, count=1):
 def test_the_first_stretch_is_as_good_as_the_best_of_all(name):
     """Every metre of wall painted in turn, each time surveyed anew: the advice wins nine tenths of it."""
     site, _, (first,) = advice(name)
-    corners = np.array([[0, 0], [4, 0], [4, 4 if name == "square_room" else 3], [0, 4 if name == "square_room" else 3]])
+    corners = np.array(
+        [[0, 0], [4, 0], [4, 4 if name == "square_room" else 3], [0, 4 if name == "square_room" else 3]]
+    )
     outcomes = []
     for a, b in zip(corners, np.roll(corners, -1, axis=0), strict=True):
         ends = np.linspace(a, b, int(np.abs(b - a).sum()) + 1)
-        for p, q in zip(ends, ends[1:], strict=False):
+        for p, q in pairwise(ends):
             outcomes.append(located(paint(site, [Marker((*p, *q), 0, 0.0)], RED)))
     before = located(site)
     assert located(paint(site, [first], RED)) - before >= 0.9 * (max(outcomes) - before)
@@ -89,3 +95,24 @@ def test_a_sensor_without_colour_is_told_so():
     with pytest.raises(ConfigError, match="paint"):
         site, found, _ = advice("oblong_room")
         advise(found, site, plan_of("oblong_room"), 1, 0.0)
+
+
+def test_paint_helps_where_the_plan_knows_no_other_colour():
+    """Evidence comes from the strips that show the paint; bare wall says nothing."""
+    bare = replace(room("square_room"), finish=np.full_like(room("square_room").finish, -1))
+    bare = replace(bare, palette=np.zeros((0, 3), np.float32))
+    painted = paint(bare, [Marker((1, 0, 2, 0), 0, 0.0)], RED)
+    assert located(painted) > located(bare) + 0.02
+
+
+def test_changes_add_up_to_what_painting_does():
+    """For every face, painted in turn: the columns that tell afterwards less those that told before."""
+    rng = stream(4, "painting")
+    own, other = rng.integers(-1, 4, (2, 6, 10))  # four faces: many columns where both see the same one
+    nothing = np.zeros((6, 10), bool)
+    painting = _Painting(own, other, rng.random((6, 10)) < 0.7, nothing, nothing).painted(2)
+    link, face, change = painting.changes()
+    for number in range(4):
+        expected = painting.painted(number).told().sum(1) - painting.told().sum(1).astype(int)
+        found = np.bincount(link[face == number], change[face == number], minlength=6)
+        np.testing.assert_array_equal(found, expected)

@@ -2,25 +2,29 @@
 
 A verb is a module here of the same name: its docstring is its help (first line the summary, with one
 example line that starts with `learnfilter`), and `run(settings)` does it and returns a summary.
-Adding one takes a module, a line in VERBS, its settings in app/config.py and configs/<verb>.yaml.
+Adding one takes a module, a line in VERBS, its settings in app/verb_settings.py and configs/<verb>.yaml.
 """
 
 from __future__ import annotations
 
-from learnfilter.app.config import (
+from learnfilter.app.config import Common
+from learnfilter.app.verb_settings import (
     AblateConfig,
-    Common,
     DemoConfig,
     ExportConfig,
+    LabelConfig,
     PlanConfig,
     RehearseConfig,
     ReplayConfig,
+    SurveyConfig,
     TrainConfig,
 )
 
 VERBS: dict[str, type[Common]] = {
     "plan": PlanConfig,
+    "survey": SurveyConfig,
     "rehearse": RehearseConfig,
+    "label": LabelConfig,
     "train": TrainConfig,
     "ablate": AblateConfig,
     "export": ExportConfig,

@@ -14,14 +14,23 @@ from __future__ import annotations
 from pathlib import Path
 from typing import Any
 
-from learnfilter.app.config import AblateConfig
+from learnfilter.app.grounds import build_lattices
 from learnfilter.app.judging import judge_models, watch
 from learnfilter.app.models import LEARNED, settings_of, stored
-from learnfilter.app.pages import DEPTH_ONLY, SIMULATED, forests, provenance, score_charts, score_tables
-from learnfilter.app.pages import settings_text, size_table, table_lines
-from learnfilter.app.grounds import build_lattices
+from learnfilter.app.pages import (
+    DEPTH_ONLY,
+    SIMULATED,
+    forests,
+    provenance,
+    score_charts,
+    score_tables,
+    settings_text,
+    size_table,
+    table_lines,
+)
 from learnfilter.app.runs import open_run
 from learnfilter.app.studying import study_subject
+from learnfilter.app.verb_settings import AblateConfig
 from learnfilter.report import RunPage, write_page
 
 
@@ -30,7 +39,9 @@ def run(settings: AblateConfig) -> dict[str, Any]:
     made_with = settings_of(Path(settings.model))
     models = stored(Path(settings.model) / "models", build_lattices(made_with).layout)
     study = settings.study
-    subject = study_subject(made_with, settings.site, settings.condition, study, settings.seed, settings.drives)
+    subject = study_subject(
+        made_with, settings.site, settings.condition, study, settings.seed, settings.drives
+    )
     folder = open_run("ablate", settings.name or "default", settings)
     found = judge_models(
         models, subject.grounds, "as configured", folder.path, study.mark, settings.seed, study.hide_colour

@@ -16,7 +16,6 @@ from dataclasses import replace
 from typing import Any
 
 from learnfilter.app.build import build_plan
-from learnfilter.app.config import DemoConfig, TrainConfig
 from learnfilter.app.exporting import export_bundle
 from learnfilter.app.judging import Judgement, judge_models, watch
 from learnfilter.app.models import LEARNED, Stored
@@ -36,6 +35,7 @@ from learnfilter.app.replaying import draw, replay_bundle
 from learnfilter.app.runs import RunFolder, open_run
 from learnfilter.app.studying import Subject, study_subject
 from learnfilter.app.training import train_models
+from learnfilter.app.verb_settings import DemoConfig, TrainConfig
 from learnfilter.app.verbs.train import check_families
 from learnfilter.drives.tables import iter_rows, write_drive
 from learnfilter.export.check import compare
@@ -110,7 +110,11 @@ def _page(
     plan, strip = subject.plans[0], subject.drives[0][0].strip
     shown = [models[found.analytic], models[LEARNED]]
     pairs = list(zip(subject.grounds, subject.plans, strict=True))
-    watched = [(ground, own, 0) for ground, own in pairs[:3]] if len(pairs) > 1 else [(*pairs[0], n) for n in (0, 1)]
+    watched = (
+        [(ground, own, 0) for ground, own in pairs[:3]]
+        if len(pairs) > 1
+        else [(*pairs[0], n) for n in (0, 1)]
+    )
     handed = Table(
         "What goes to the robot",
         (Column("bundle"), Column("value", ",d")),
@@ -122,7 +126,7 @@ def _page(
             ("rows of the replayed drive", replayed["rows"]),
             ("locked at row", replayed["locked_at_row"]),
         ),
-        f"The NumPy runtime reproduces the bundle's vectors to a total variation of {bundle['runtime_tv']:.1e}.",
+        f"The NumPy runtime reproduces its vectors to a total variation of {bundle['runtime_tv']:.1e}.",
     )
     return RunPage(
         title=folder.path.name,
@@ -137,6 +141,8 @@ def _page(
         charts=(*score_charts(found), *training_charts(models)),
         facts=(size_table(models, found), handed),
         cautions=((SIMULATED,) if plan.has_finishes else (DEPTH_ONLY, SIMULATED)),
-        provenance=provenance(settings, {"config": models[LEARNED].facts["config"], "plan": plan.content_hash()}),
+        provenance=provenance(
+            settings, {"config": models[LEARNED].facts["config"], "plan": plan.content_hash()}
+        ),
         settings=settings_text(settings),
     )

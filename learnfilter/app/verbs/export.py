@@ -16,11 +16,11 @@ from pathlib import Path
 from typing import Any
 
 from learnfilter.app.build import build_plan
-from learnfilter.app.config import ExportConfig
 from learnfilter.app.exporting import export_bundle
 from learnfilter.app.grounds import build_lattices
-from learnfilter.app.models import settings_of, stored
+from learnfilter.app.models import chosen, settings_of
 from learnfilter.app.runs import open_run
+from learnfilter.app.verb_settings import ExportConfig
 from learnfilter.core.errors import ConfigError
 from learnfilter.export.check import compare
 
@@ -29,17 +29,15 @@ def run(settings: ExportConfig) -> dict[str, Any]:
     """Do the verb; returns the summary."""
     source = Path(settings.model)
     made_with = settings_of(source)
-    models = stored(source / "models", build_lattices(made_with).layout)
-    if settings.contender not in models:
-        expected = " or ".join(models)
-        raise ConfigError("no such model in this run", place="contender", expected=expected, got=settings.contender)
+    model = chosen(source, settings.contender, build_lattices(made_with).layout)
     plan = build_plan(settings.site)
     figures = _figures(settings.ablation)
     folder = open_run("export", settings.name or plan.name, settings, replace=True)
     out = Path(settings.out) if settings.out else folder.path / "bundle"
-    sizes = export_bundle(made_with, models[settings.contender], plan, out, figures)
+    sizes = export_bundle(made_with, model, plan, out, figures)
     sizes["runtime_tv"] = compare(out)
-    print(f"written: {out} ({sizes['bytes'] / 1e6:.1f} MB, {sizes['weights']:,} weights, {sizes['poses']:,} poses)")
+    size = f"{sizes['bytes'] / 1e6:.1f} MB, {sizes['weights']:,} weights, {sizes['poses']:,} poses"
+    print(f"written: {out} ({size})")
     print(f"the NumPy runtime reproduces its vectors to a total variation of {sizes['runtime_tv']:.1e}")
     return folder.finish(sizes)
 

@@ -17,8 +17,8 @@ from pathlib import Path
 from typing import Any
 
 from learnfilter.app.build import build_plan
-from learnfilter.app.config import PlanConfig
 from learnfilter.app.runs import open_run
+from learnfilter.app.verb_settings import PlanConfig
 from learnfilter.core.errors import ConfigError, PlanError
 from learnfilter.plan import check_plan, write_plan
 from learnfilter.report import draw_plan

@@ -15,9 +15,10 @@ from collections.abc import Callable, Iterable
 from typing import Any
 
 from learnfilter.app.build import build_conditions, build_plan, build_strip
-from learnfilter.app.config import RehearseConfig, hold
+from learnfilter.app.config import hold
 from learnfilter.app.progress import progress
 from learnfilter.app.runs import open_run
+from learnfilter.app.verb_settings import RehearseConfig
 from learnfilter.core.seeds import stream
 from learnfilter.drives.drive import Drive
 from learnfilter.drives.tables import write_drive

@@ -5,7 +5,7 @@ Every strip goes through the NumPy runtime, exactly as on the robot. The run's f
 is drawn on your plan, without it on the surfaces that the bundle knows.
 
 Example:
-  learnfilter replay bundle=runs/export/lindqvist_office/bundle drive=runs/rehearse/default/drives/0000-00.parquet
+  learnfilter replay bundle=runs/export/office/bundle drive=tuesday.parquet site.file=office.geojson
 """
 
 from __future__ import annotations
@@ -14,9 +14,9 @@ from pathlib import Path
 from typing import Any
 
 from learnfilter.app.build import build_plan
-from learnfilter.app.config import ReplayConfig
 from learnfilter.app.replaying import draw, replay_bundle, seen_surfaces
 from learnfilter.app.runs import open_run
+from learnfilter.app.verb_settings import ReplayConfig
 from learnfilter.drives.tables import iter_rows
 from learnfilter.runtime import load_bundle
 

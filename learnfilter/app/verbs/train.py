@@ -15,11 +15,12 @@ from __future__ import annotations
 from pathlib import Path
 from typing import Any
 
-from learnfilter.app.config import TrainConfig, hold
+from learnfilter.app.config import hold
 from learnfilter.app.models import LEARNED
 from learnfilter.app.pages import provenance, settings_text, training_charts
 from learnfilter.app.runs import open_run
 from learnfilter.app.training import train_models
+from learnfilter.app.verb_settings import TrainConfig
 from learnfilter.report import Column, RunPage, Table, write_page
 from learnfilter.sim import FAMILIES
 
@@ -47,10 +48,12 @@ def run(settings: TrainConfig) -> dict[str, Any]:
             verb="train",
             headline=f"Nats of the true pose on held-out sites: {LEARNED} {validation[LEARNED]:.2f}, "
             f"best analytic {min(v for n, v in validation.items() if n != LEARNED):.2f}.",
-            confidence="Validation chose the weights, so it flatters them; `learnfilter ablate` gives the evidence.",
+            confidence="Validation chose the weights, so it flatters them; `learnfilter ablate` proves.",
             job="Train an observation model and tune its analytic opponents.",
             tables=(
-                Table("Validation", (Column("model"), Column("nats", ".2f", "low")), tuple(validation.items())),
+                Table(
+                    "Validation", (Column("model"), Column("nats", ".2f", "low")), tuple(validation.items())
+                ),
             ),
             charts=training_charts(models),
             provenance=provenance(settings, {"config": models[LEARNED].facts["config"]}),
@@ -58,7 +61,9 @@ def run(settings: TrainConfig) -> dict[str, Any]:
         ),
         folder.path / "report.html",
     )
-    summary = folder.finish({"validation_nats": validation, "parameters": models[LEARNED].facts["parameters"]})
+    summary = folder.finish(
+        {"validation_nats": validation, "parameters": models[LEARNED].facts["parameters"]}
+    )
     for name, value in validation.items():
         print(f"{name:<16} {value:6.2f} nats on held-out sites")
     print(f"written: {Path(folder.path)} (models, report.html)")

@@ -21,7 +21,9 @@ VALUES = st.sampled_from([None, True, -1, 0, 3, 0.5, -2.5, "", "relu", [], [1.5]
 def places(value, path=()):
     """The path of every member and item, at any depth."""
     yield path
-    children = value.items() if isinstance(value, dict) else enumerate(value) if isinstance(value, list) else ()
+    children = (
+        value.items() if isinstance(value, dict) else enumerate(value) if isinstance(value, list) else ()
+    )
     for key, child in children:
         yield from places(child, (*path, key))
 

@@ -51,7 +51,11 @@ def test_a_belief_that_drove_into_the_wall_starts_anew(belief):
     lone = np.zeros_like(belief)
     lone[0, site.cells[0, 0], site.cells[0, 1]] = 1.0
     out = predict(
-        lone, np.array([-9.0, 0.0, 0.0], np.float32), site.grid, site.live, MotionNoise(0.05, 0.02, 0.01, 0.01)
+        lone,
+        np.array([-9.0, 0.0, 0.0], np.float32),
+        site.grid,
+        site.live,
+        MotionNoise(0.05, 0.02, 0.01, 0.01),
     )
     expected = site.live / (site.live.sum() * site.grid.headings)
     np.testing.assert_allclose(out, np.broadcast_to(expected, out.shape), rtol=1e-5)  # float32

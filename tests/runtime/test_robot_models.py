@@ -6,7 +6,9 @@ import torch
 
 from learnfilter.core.strip import RingLayout
 from learnfilter.filtering.rollout import lay_strips
+from learnfilter.observe.contract import pool_looks as torch_pool_looks
 from learnfilter.runtime import load_bundle
+from learnfilter.runtime.contract import pool_looks
 from learnfilter.runtime.models import sum_along_rings
 from tests.shipping import KINDS, model_of, rehearsed
 
@@ -35,3 +37,12 @@ def test_rings_are_summed_like_a_plain_loop():
         [sum(rows[w, ring[(2 * h - 1 + w) % 8, n]] for w in range(3)) for h in range(4)] for n in range(6)
     ]
     np.testing.assert_allclose(sum_along_rings(rows, ring, layout), expected, atol=1e-6)  # float32
+
+
+@pytest.mark.parametrize("per_heading", [2, 4])
+def test_looks_are_pooled_as_trained(per_heading):
+    """One look a bin, or two that the bin owns."""
+    layout = RingLayout(4 * per_heading, per_heading, 0.0, 0, (0,))
+    scores = np.random.default_rng(0).normal(0, 30, (5, 4 * layout.looks)).astype(np.float32)
+    expected = torch_pool_looks(torch.from_numpy(scores)[None], layout)[0]
+    np.testing.assert_allclose(pool_looks(scores, layout), expected.numpy(), atol=1e-5)  # float32

@@ -1,0 +1,132 @@
+"""Typed settings of each verb; the groups they are made of are in config.py and recipes.py."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from learnfilter.app.config import (
+    Common,
+    ConditionConfig,
+    GridConfig,
+    MotionConfig,
+    SiteConfig,
+    StripConfig,
+    hold,
+)
+from learnfilter.app.recipes import ObserveConfig, RecipeConfig, StudyConfig
+
+
+@dataclass
+class PlanConfig(Common):
+    """Settings of `learnfilter plan`."""
+
+    site: SiteConfig
+    robot_radius_m: float
+    out: str | None
+
+
+@dataclass
+class RehearseConfig(Common):
+    """Settings of `learnfilter rehearse`."""
+
+    site: SiteConfig
+    strip: StripConfig
+    condition: ConditionConfig
+    count: int
+    drives: int
+    rows: int
+    robot_radius_m: float
+    format: str
+
+    def __post_init__(self) -> None:
+        super().__post_init__()
+        for key in ("count", "drives", "rows"):
+            hold(key, getattr(self, key) >= 1, "at least 1", getattr(self, key))
+        hold("format", self.format in ("parquet", "csv"), "parquet or csv", self.format)
+
+
+@dataclass
+class TrainConfig(Common):
+    """Settings of `learnfilter train`."""
+
+    site: SiteConfig
+    strip: StripConfig
+    grid: GridConfig
+    motion: MotionConfig
+    condition: ConditionConfig
+    observe: ObserveConfig
+    train: RecipeConfig
+
+
+@dataclass
+class AblateConfig(Common):
+    """Settings of `learnfilter ablate`."""
+
+    model: str
+    site: SiteConfig
+    condition: ConditionConfig
+    study: StudyConfig
+    drives: list[str]
+
+
+@dataclass
+class ExportConfig(Common):
+    """Settings of `learnfilter export`."""
+
+    model: str
+    contender: str
+    site: SiteConfig
+    ablation: str | None
+    out: str | None
+
+
+@dataclass
+class ReplayConfig(Common):
+    """Settings of `learnfilter replay`."""
+
+    site: SiteConfig
+    bundle: str
+    drive: str
+    depth_kind: str | None
+
+
+@dataclass
+class DemoConfig(TrainConfig):
+    """Settings of `learnfilter demo`."""
+
+    study: StudyConfig
+
+
+@dataclass
+class SurveyConfig(Common):
+    """Settings of `learnfilter survey`."""
+
+    site: SiteConfig
+    strip: StripConfig
+    grid: GridConfig
+    budget: int
+    margin_nats: float
+    markers: int
+
+    def __post_init__(self) -> None:
+        super().__post_init__()
+        hold("budget", self.budget >= 1, "at least 1", self.budget)
+        hold("margin_nats", self.margin_nats > 0, "above 0", self.margin_nats)
+        hold("markers", self.markers >= 0, "at least 0", self.markers)
+
+
+@dataclass
+class LabelConfig(Common):
+    """Settings of `learnfilter label`."""
+
+    site: SiteConfig
+    model: str
+    contender: str
+    drive: str
+    depth_kind: str | None
+    known: dict[int, list[float]]
+
+    def __post_init__(self) -> None:
+        super().__post_init__()
+        good = all(row >= 0 and len(pose) == 3 for row, pose in self.known.items())
+        hold("known", good, "row: [x_m, y_m, heading_deg]", self.known)
