@@ -10,7 +10,6 @@ from collections.abc import Callable, Sequence
 from pathlib import Path
 from typing import Any, NamedTuple
 
-import numpy as np
 import torch
 
 from learnfilter.core.errors import InputError
@@ -102,7 +101,7 @@ def _rows_on(contender: Contender, ground: Ground, condition: str, done: set[tup
             "lock_metres": None if lock is None else float(metres[lock]),
             "cap_metres": float(metres[len(result.estimate) - 1]),
             "false_lock": None if lock is None else bool(right[lock] == 0),
-            "milliseconds": float(1e3 * np.median(result.seconds)),
+            "milliseconds": 1e3 * result.seconds,
         }
         for mark in MARKS:
             if mark <= len(result.estimate):

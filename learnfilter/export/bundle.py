@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import json
 import os
-import shutil
+import tempfile
 from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager
 from dataclasses import asdict, dataclass, replace
@@ -143,16 +143,18 @@ def _depth_only(filter_: Filter) -> list[str]:
 def _whole_folder(folder: Path) -> Iterator[Path]:
     """Yield a folder beside `folder` to fill; on success it takes the place of `folder`."""
     folder.parent.mkdir(parents=True, exist_ok=True)
-    beside, before = (folder.with_name(f".{folder.name}.{os.getpid()}.{part}") for part in ("part", "old"))
-    beside.mkdir()
-    try:
-        yield beside
+    with tempfile.TemporaryDirectory(prefix=f".{folder.name}.", dir=folder.parent) as scratch:
+        new, old = Path(scratch) / "new", Path(scratch) / "old"
+        new.mkdir()
+        yield new
         if folder.exists():
-            os.replace(folder, before)
-        os.replace(beside, folder)
-    finally:
-        for left in (beside, before):
-            shutil.rmtree(left, ignore_errors=True)
+            os.replace(folder, old)
+        try:
+            os.replace(new, folder)
+        except OSError:
+            if old.exists():
+                os.replace(old, folder)
+            raise
 
 
 def _write(path: Path, content: bytes) -> None:

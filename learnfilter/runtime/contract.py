@@ -41,7 +41,7 @@ class RobotModel(ABC):
 
 
 def pool_looks(scores: Floats, layout: RingLayout) -> Floats:
-    """[n h] log of the mean likelihood over the looks of each heading bin: bin h owns looks 2 h - 1 and 2 h."""
+    """[n h] log of the mean likelihood over the looks of a bin; bin h owns looks 2 h - 1 and 2 h."""
     if layout.looks == 1:
         return scores
     return np.logaddexp(scores[:, 0::2], np.roll(scores, 1, axis=1)[:, 0::2]) - np.float32(np.log(2))

@@ -1,7 +1,7 @@
 """Observation models as the robot runs them.
 
-Each mirrors a model of `observe/`, which explains it, without torch; a test holds both together.  Facts come from the manifest, arrays
-from the weights; nothing is a constant of this code.
+Each mirrors a model of `observe/`, which explains it, without torch; a test holds both together.
+Facts come from the manifest, arrays from the weights; nothing is a constant of this code.
 """
 
 from __future__ import annotations

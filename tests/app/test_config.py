@@ -37,7 +37,8 @@ def test_every_shipped_option_is_valid(group, option):
 @pytest.mark.parametrize("verb", VERBS)
 def test_every_verb_has_settings_for_all_its_keys(verb):
     """Defaults live in the files alone, so each key must stand there."""
-    composed = compose_settings(verb, ["site.file=some.geojson"])
+    given = {"replay": ["bundle=some", "drive=some.csv"], "label": ["drive=some.csv"]}.get(verb, [])
+    composed = compose_settings(verb, ["site.file=some.geojson", *given])
     assert "???" not in flat(OmegaConf.to_container(composed)).values()
     typed(composed, VERBS[verb])
 

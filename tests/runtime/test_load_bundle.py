@@ -144,7 +144,7 @@ def test_half_precision_weights_load(bundle):
     [
         ("layout.bearings", lambda m: m["layout"].update(bearings=48)),
         ("layout.source", lambda m: m["strip"].update(bearings_rad=[0.0])),
-        ("layout.source", lambda m: m["layout"].update(source=[0] * 33)),
+        ("layout.source", lambda m: m["layout"].update(source=[0] * 65)),
         ("weighing.floor", lambda m: m["weighing"].update(floor=0)),
         (f"files.{SITE}", lambda m: m["files"].pop(SITE)),
         ("files./etc/passwd", lambda m: m["files"].update({"/etc/passwd": {"bytes": 0, "sha256": ""}})),
