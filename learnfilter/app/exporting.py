@@ -25,7 +25,8 @@ def filter_for(made_with: TrainConfig, model: Stored, plan: FloorPlan) -> Filter
     """A model on a plan, with the sensor and lattice it was trained for."""
     lattices = build_lattices(made_with)
     weighing = Weighing(lattices.after_m, lattices.after_rad, model.facts["floor"])
-    return Filter(model.model, model.motion, lattices.render(plan), build_strip(made_with.strip), weighing)
+    site = lattices.render(plan, Path(made_with.runs) / "cache")
+    return Filter(model.model, model.motion, site, build_strip(made_with.strip), weighing)
 
 
 def vector_drive(plan: FloorPlan, strip: Strip, radius_m: float, seed: int, rows: int = VECTOR_ROWS) -> Drive:

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from functools import partial
+from pathlib import Path
 from typing import NamedTuple
 
 import numpy as np
@@ -21,7 +23,7 @@ from learnfilter.filtering.motion import MotionSettings
 from learnfilter.filtering.rollout import lay_strips
 from learnfilter.observe.contract import Strips
 from learnfilter.plan.floorplan import FloorPlan
-from learnfilter.render import grid_for, render_site
+from learnfilter.render import cached_site, grid_for, render_site
 from learnfilter.render.site import Site
 from learnfilter.sim.conditions import Conditions
 from learnfilter.sim.driver import free_poses
@@ -50,9 +52,10 @@ class Lattices:
     after_m: float
     after_rad: float
 
-    def render(self, plan: FloorPlan) -> Site:
-        """The plan's site."""
-        return render_site(
+    def render(self, plan: FloorPlan, cache: Path | None = None) -> Site:
+        """The plan's site; kept in and taken from the folder `cache` where one is given."""
+        render = render_site if cache is None else partial(cached_site, cache)
+        return render(
             plan,
             self.layout,
             grid_for(plan, self.headings, self.cell_m),

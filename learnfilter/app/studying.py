@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from pathlib import Path
 from typing import NamedTuple
 
 from learnfilter.app.build import build_conditions, build_plan, build_strip
@@ -93,5 +94,5 @@ def study_subject(
                 "other sensor than the models'", file=drive.name,
                 expected=f"{strip.columns} columns", got=drive.strip.columns,
             )  # fmt: skip
-    ground = lattices.ground(lattices.render(plan), drives)
+    ground = lattices.ground(lattices.render(plan, Path(settings.runs) / "cache"), drives)
     return Subject((ground,), (plan,), (drives,), title)

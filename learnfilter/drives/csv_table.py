@@ -122,5 +122,10 @@ def write_csv(path: Path, columns: Columns, members: dict[str, Any]) -> None:
         writer.writerow(header)
         for start in range(0, len(columns["time_s"]), 1024):
             rows = slice(start, start + 1024)
-            texts = [array[rows].astype(str) for array in columns.values()]
-            writer.writerows(np.column_stack(texts).tolist())
+            cells = zip(*(array[rows].reshape(len(array[rows]), -1) for array in columns.values()), strict=True)
+            writer.writerows([_number(value) for array in row for value in array] for row in cells)
+
+
+def _number(value: np.floating) -> str:
+    """The shortest text that reads back as the same float; NumPy's own printing obeys global settings."""
+    return np.format_float_positional(value, unique=True, trim="-") if np.isfinite(value) else str(value)

@@ -70,7 +70,7 @@ def weigh(state: FilterState, log_likelihood: Tensor, lattice: Lattice, floor: f
     """
     check("log_likelihood", log_likelihood, "b n h", b=len(state.belief), h=len(lattice.headings))
     live = lattice.live.expand_as(state.belief)
-    uniform = 1.0 / (lattice.live.sum() * len(lattice.headings))
+    uniform = 1.0 / (int(lattice.live.sum()) * len(lattice.headings))  # a float, good in any precision
     prior = state.belief * (1 - floor) + floor * uniform
     possible = live & (prior > 0)
     log_prior = torch.where(possible, prior, 1.0).log()

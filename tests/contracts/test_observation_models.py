@@ -1,5 +1,6 @@
 """Laws that every observation model obeys, analytic or learned, trained or not."""
 
+import json
 from pathlib import Path
 
 import numpy as np
@@ -7,7 +8,9 @@ import pytest
 import torch
 from torch.testing import assert_close
 
+from learnfilter.core.errors import InputError
 from learnfilter.core.strip import Strip, even_strip, lay_on_ring
+from learnfilter.observe.describe import describe, rebuild
 from learnfilter.plan.readers import read_plan
 from tests.contracts import small
 from tests.contracts.small import LAYOUT, MODELS, PER_HEADING, TWO_LOOKS, altered, score, small_site, strips
@@ -149,6 +152,24 @@ def test_where_the_plan_knows_nothing_no_pose_is_preferred(name):
     site = altered(rings, unsure=np.ones_like(rings.unsure), finish=np.full_like(rings.finish, -1))
     scores = score(MODELS[name](), strips(), site).flatten(1)
     assert_close(scores, scores[:, :1].expand_as(scores), **FLOAT32)
+
+
+@every_model
+def test_a_described_model_is_rebuilt_alike(name):
+    """Facts survive JSON, tensors are all the rest."""
+    model = MODELS[name]()
+    facts, tensors = describe(model)
+    again = rebuild(LAYOUT, json.loads(json.dumps(facts)), tensors)
+    assert_close(
+        score(again, strips(), small_site()), score(model, strips(), small_site()), rtol=1e-6, atol=1e-6
+    )  # exponents are kept as float32 and their logarithms taken again
+
+
+@pytest.mark.parametrize("facts", [{}, {"kind": "crystal ball"}])
+def test_a_model_of_an_unknown_kind_is_refused(facts):
+    """By an error that names the known ones."""
+    with pytest.raises(InputError, match="beam or endpoint"):
+        rebuild(LAYOUT, facts, {})
 
 
 def twins(site, cell, heading):

@@ -75,6 +75,12 @@ def test_the_order_of_independent_evidence_does_not_matter():
     assert_allclose(cells(prior, [7.0] * 3)[1], np.log(7), atol=EXACT)
 
 
+def test_evidence_adds_up_from_strip_to_strip():
+    """log p(a) + log p(b | a) = log p(a, b), here the prior's mean of a b."""
+    a, b, prior = [0.6, 0.2, 0.9], [0.1, 0.5, 0.5], [0.2, 0.5, 0.3]
+    assert_allclose(cells(prior, a, b)[1], np.log(np.dot(prior, np.multiply(a, b))), atol=EXACT)
+
+
 def test_very_small_likelihoods_do_not_underflow():
     """-2000 nats is zero as a probability, but only differences count."""
     hall = lattice(1, 1, 2)
@@ -186,6 +192,15 @@ def test_a_floor_lets_the_belief_recover():
     state = certain_but_wrong(0.003)
     assert_allclose(state.belief.flatten().numpy(), [0, 0.25, 0.75], atol=1e-9)
     assert_allclose(state.log_evidence.numpy(), [np.log(0.004)], atol=1e-6)
+
+
+def test_a_floor_takes_its_share_from_the_rest():
+    """0.3 over three cells leaves (0.8, 0.1, 0.1) of a certainty, and is no evidence by itself."""
+    hall = lattice(1, 1, 3)
+    nothing = torch.zeros(1, 3, 1, dtype=torch.float64)
+    state = weigh(FilterState(at(hall, 0, 0, 0), torch.zeros(1, dtype=torch.float64)), nothing, hall, 0.3)
+    assert_allclose(state.belief.flatten().numpy(), [0.8, 0.1, 0.1], atol=EXACT)
+    assert_allclose(state.log_evidence.numpy(), [0.0], atol=EXACT)
 
 
 def test_likelihoods_of_another_lattice_are_refused():

@@ -94,12 +94,13 @@ def test_whole_cell_moves_carry_the_belief_along(heading, row, column):
     assert_allclose(planes.sum(1) @ np.arange(21) / planes.sum(), row, atol=1e-9)
 
 
-def test_a_move_across_is_a_move_to_the_left():
-    """Facing up (heading 2 of 8), left is -x."""
+@pytest.mark.parametrize(("heading", "row", "column"), [(0, 12, 10), (2, 10, 8), (4, 8, 10), (6, 10, 12)])
+def test_a_move_across_is_a_move_to_the_left(heading, row, column):
+    """Facing right, left is up; facing up, it is -x; and so round."""
     hall = lattice(8, 21, 21)
-    belief, _ = predict(at(hall, 2, 10, 10), odometry(0.0, 0.5), hall, motion())
-    planes = belief.detach()[0, 2].numpy()
-    assert np.unravel_index(planes.argmax(), planes.shape) == (10, 8)
+    belief, _ = predict(at(hall, heading, 10, 10), odometry(0.0, 0.5), hall, motion())
+    planes = belief.detach()[0, heading].numpy()
+    assert np.unravel_index(planes.argmax(), planes.shape) == (row, column)
 
 
 def test_four_quarter_turns_lead_back():

@@ -6,23 +6,13 @@ import torch
 from numpy.testing import assert_allclose, assert_array_equal
 from torch.testing import assert_close
 
-from learnfilter.filtering.course import truth_of
 from learnfilter.observe.matcher import Matcher, MatcherShape
 from learnfilter.training.matching import log_weights, matching_loss, neighbours
-from tests.contracts.small import HEADINGS, LAYOUT, birth, score, small_site, strips, trained
+from tests.contracts.small import HEADINGS, LAYOUT, birth, score, small_site, trained
+from tests.training.drives import stills_on_small_site
 
 SITE = small_site()
 POSES = HEADINGS * SITE.n_cells
-
-
-def stills(count=12, seed=0):
-    """Random strips that claim to come from random live poses."""
-    rng = np.random.default_rng(seed)
-    cell, heading = rng.integers(0, SITE.n_cells, count), rng.integers(0, HEADINGS, count)
-    row, column = SITE.cells[cell].T
-    x, y = SITE.grid.x_centres()[column], SITE.grid.y_centres()[row]
-    truth = truth_of(SITE, np.stack([x, y, SITE.grid.heading_centres()[heading]], axis=1))
-    return strips(seed, count), truth
 
 
 def ignorant():
@@ -40,13 +30,13 @@ def ignorant():
 @pytest.mark.parametrize("decoys", [0, 20, 1000])
 def test_without_information_the_loss_is_the_logarithm_of_the_number_of_poses(decoys):
     """However few candidates stand for them: cross-entropy of zero logits is ln n."""
-    loss = matching_loss(ignorant(), SITE, stills(), np.random.default_rng(0), 12, decoys)
+    loss = matching_loss(ignorant(), SITE, stills_on_small_site(12), np.random.default_rng(0), 12, decoys)
     assert_allclose(float(loss.detach()), np.log(POSES), rtol=1e-6)  # float32
 
 
 def test_with_all_cells_as_candidates_the_loss_is_the_filters():
     """Negative log-probability of the true pose after one strip from an even prior."""
-    model, (seen, truth) = trained(), stills()
+    model, (seen, truth) = trained(), stills_on_small_site(12)
     scores = score(model, seen, SITE)
     log_belief = scores.flatten(1).log_softmax(1).view_as(scores)
     expected = -log_belief[torch.arange(12), truth.cell, truth.heading].mean()
@@ -57,7 +47,7 @@ def test_with_all_cells_as_candidates_the_loss_is_the_filters():
 def test_few_candidates_estimate_the_loss_over_all():
     """The mean over 12 draws of 30 decoys of 144 cells, for evidence as flat as a tempered model's, stays
     within a tenth of a nat of the loss over all cells (its logarithm biases it a little downwards)."""
-    shown = stills()
+    shown = stills_on_small_site(12)
     start = birth()._replace(range_exponent=0.05, colour_exponent=0.05)
     model = Matcher(LAYOUT, start, MatcherShape(residual=False), torch.Generator())
     with torch.no_grad():
@@ -69,7 +59,10 @@ def test_few_candidates_estimate_the_loss_over_all():
 def test_the_same_stream_gives_the_same_loss():
     """All draws come from the generator that is handed in."""
     losses = [
-        float(matching_loss(trained(), SITE, stills(), np.random.default_rng(3), 5, 9).detach()) for _ in "ab"
+        float(
+            matching_loss(trained(), SITE, stills_on_small_site(12), np.random.default_rng(3), 5, 9).detach()
+        )
+        for _ in "ab"
     ]
     assert losses[0] == losses[1]
 
@@ -77,7 +70,7 @@ def test_the_same_stream_gives_the_same_loss():
 def test_every_weight_gets_a_gradient():
     """Of a matcher that has left its silent start."""
     model = trained()
-    matching_loss(model, SITE, stills(), np.random.default_rng(0), 12, 30).backward()
+    matching_loss(model, SITE, stills_on_small_site(12), np.random.default_rng(0), 12, 30).backward()
     assert all(p.grad is not None and p.grad.abs().max() > 0 for p in model.parameters())
 
 

@@ -6,26 +6,15 @@ import torch
 from numpy.testing import assert_allclose, assert_array_equal
 from torch.testing import assert_close
 
-from learnfilter.filtering.course import Course, truth_of
 from learnfilter.filtering.motion import MotionModel
-from learnfilter.filtering.rollout import Steps
 from learnfilter.filtering.trace import trace
 from learnfilter.training.samples import stretch
 from learnfilter.training.through_filter import filter_loss, step_losses
-from tests.contracts.small import HEADINGS, blend, small_site, strips, trained
+from tests.contracts.small import HEADINGS, blend, small_site, trained
+from tests.training.drives import drive_on_small_site
 
 SITE = small_site()
 FLOOR = 1e-3
-
-
-def course(length, seed=0):
-    """A drive along y = 1.25 m, one cell a strip; strips are random."""
-    x = 0.75 + 0.5 * np.arange(length)
-    poses = np.stack([x, np.full(length, 1.25), np.zeros(length)], axis=1)
-    odometry = torch.zeros(length, 3)
-    odometry[1:, 0] = 0.5
-    steps = Steps(np.arange(length), odometry, strips(seed, length))
-    return Course("drive", steps, truth_of(SITE, poses), poses)
 
 
 def losses_of(model, courses, length):
@@ -36,7 +25,7 @@ def losses_of(model, courses, length):
 @pytest.mark.parametrize("make", [blend, trained])
 def test_losses_are_what_the_filter_says_of_the_truth(make):
     """Drive by drive, strip by strip, the trace's log-probabilities."""
-    model, courses = make(), (course(4, 0), course(4, 1))
+    model, courses = make(), (drive_on_small_site(4, 0), drive_on_small_site(4, 1))
     losses = losses_of(model, courses, 4).detach().numpy()
     for column, driven in enumerate(courses):
         result = trace(model, MotionModel(), SITE, driven, FLOOR)
@@ -50,14 +39,16 @@ def test_without_information_the_first_loss_is_the_logarithm_of_the_number_of_po
         for exponent in model.log_exponent.values():
             exponent.fill_(-30.0)
     assert_allclose(
-        float(losses_of(model, (course(4),), 4)[0].detach()), np.log(SITE.n_cells * HEADINGS), rtol=1e-5
+        float(losses_of(model, (drive_on_small_site(4),), 4)[0].detach()),
+        np.log(SITE.n_cells * HEADINGS),
+        rtol=1e-5,
     )
 
 
 def test_exponents_and_spreads_get_gradients():
     """What the filter stage tunes of an analytic model."""
     model, motion = blend(), MotionModel()
-    odometry, seen, cell, heading = stretch((course(4),), 4, np.random.default_rng(0))
+    odometry, seen, cell, heading = stretch((drive_on_small_site(4),), 4, np.random.default_rng(0))
     step_losses(model, motion, SITE, odometry, seen, cell, heading, FLOOR).sum().backward()
     assert all(float(p.grad.abs()) > 0 for p in model.parameters())
     assert float(motion.log_spread.grad.abs().max()) > 0
@@ -72,7 +63,7 @@ def test_the_loss_is_the_last_steps_and_a_share_of_all(every_step, expected):
 
 def test_a_stretch_is_a_piece_of_the_drive():
     """Odometry, strips and truth of the same rows, wherever it begins."""
-    whole = course(9)
+    whole = drive_on_small_site(9)
     rng = np.random.default_rng(0)
     for _ in range(5):
         odometry, seen, cell, heading = stretch((whole,), 4, rng)
@@ -86,7 +77,7 @@ def test_a_stretch_is_a_piece_of_the_drive():
 
 def test_stretches_are_step_major_and_as_long_as_the_shortest_drive():
     """Two drives of 3 and 9 strips, 8 asked for: 3 steps, the drives' strips in turn."""
-    short, long = course(3, 0), course(9, 1)
+    short, long = drive_on_small_site(3, 0), drive_on_small_site(9, 1)
     odometry, seen, _, _ = stretch((short, long), 8, np.random.default_rng(0))
     assert odometry.shape == (3, 2, 3)
     assert_array_equal(seen.depth_m.reshape(3, 2, -1)[:, 0], short.steps.strips.depth_m)

@@ -37,8 +37,9 @@ def run(settings: LabelConfig) -> dict[str, Any]:
     drive = read_drive(Path(settings.drive), build_strip(made_with.strip), depth_kind=settings.depth_kind)
     folder = open_run("label", settings.name or Path(settings.drive).stem, settings, replace=True)
     known = {row: np.array([x, y, np.radians(deg)]) for row, (x, y, deg) in settings.known.items()}
+    site = lattices.render(plan, Path(settings.runs) / "cache")
     labels = smooth(
-        drive, lattices.render(plan), model.model, model.motion, after_m=lattices.after_m,
+        drive, site, model.model, model.motion, after_m=lattices.after_m,
         after_rad=lattices.after_rad, floor=model.facts["floor"], known=known,
     )  # fmt: skip
     table = folder.path / Path(settings.drive).name
