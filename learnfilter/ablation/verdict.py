@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from learnfilter.ablation.statistics import Interval, bootstrap, paired_bootstrap, site_means, sites_needed
 from learnfilter.ablation.study import MARKS, Row
+from learnfilter.core.errors import ConfigError
 
 # More sites than this are no advice but a way of saying that there is no difference.
 MOST_SITES = 500
@@ -107,15 +108,17 @@ def decide(
 
     The learned model is shipped if it locates more and saves nats, both beyond doubt (95 %
     intervals above zero), and is not clearly worse at any other number of strips.
+
+    Raises:
+        ConfigError: no drive has `mark` weighed strips.
     """
-    at = next(difference for difference in found if difference.mark == mark)
+    by_mark = {difference.mark: difference for difference in found}
+    if mark not in by_mark:
+        expected = f"at most {max(by_mark)}, or longer drives"
+        raise ConfigError("no drive is so long", place="study.mark", expected=expected, got=mark)
+    at = by_mark[mark]
     worse = [d.mark for d in found if d.located.high < 0]
-    gain = (
-        f"{100 * at.located.value:+.1f} points located after {mark} strips "
-        f"({100 * at.located.low:+.1f} to {100 * at.located.high:+.1f}), "
-        f"{at.nll.value:+.2f} nats saved ({at.nll.low:+.2f} to {at.nll.high:+.2f})"
-    )
-    confidence = f"{gain}; 95 % intervals, paired by drive, bootstrap over {at.located.n} units."
+    confidence = _confidence(at)
     if at.located.low > 0 and at.nll.low > 0 and not worse:
         return Verdict("learned", f"Ship the learned model: {learned} beats {analytic}.", confidence)
     if at.located.high <= 0 or (at.nll.high < 0 and at.located.value <= 0):
@@ -129,14 +132,31 @@ def decide(
     )
 
 
+def _confidence(at: Difference) -> str:
+    points, nats = 100 * at.located.value, at.nll.value
+    if at.located.n < 2:
+        return (
+            f"{points:+.1f} points located after {at.mark} strips, {nats:+.2f} nats saved; one drive alone."
+        )
+    return (
+        f"{points:+.1f} points located after {at.mark} strips "
+        f"({100 * at.located.low:+.1f} to {100 * at.located.high:+.1f}), "
+        f"{nats:+.2f} nats saved ({at.nll.low:+.2f} to {at.nll.high:+.2f}); "
+        f"95 % intervals, paired by drive, bootstrap over {at.located.n} units."
+    )
+
+
 def _more(rows: Sequence[Row], learned: str, analytic: str, mark: int) -> str:
     order, sites = drives_of(rows)
     key = f"located_{mark}"
-    gaps = column(rows, learned, key, order) - column(rows, analytic, key, order)
-    needed = sites_needed(site_means(gaps, sites))
+    gaps = site_means(column(rows, learned, key, order) - column(rows, analytic, key, order), sites)
+    if len(gaps) < 2:
+        return "one drive decides nothing."
+    needed = sites_needed(gaps)
     if needed is None or needed > MOST_SITES:
         return "the difference is too small to be worth more drives; ship the analytic one."
-    return f"about {needed} more sites would."
+    unit = "drives" if len({row["site"] for row in rows}) == 1 else "sites"
+    return f"about {needed} more {unit} would."
 
 
 def choose_analytic(validation: dict[str, float]) -> str:

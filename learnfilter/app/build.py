@@ -6,11 +6,13 @@ import math
 from dataclasses import asdict
 from typing import Any
 
-from learnfilter.app.config import SiteConfig, StripConfig
+from learnfilter.app.config import SiteConfig, StripConfig, hold
 from learnfilter.core.errors import ConfigError
 from learnfilter.core.strip import Strip, even_strip
 from learnfilter.plan import FloorPlan, read_plan
+from learnfilter.sim import FAMILIES
 from learnfilter.sim.conditions import Conditions
+from learnfilter.sim.families import SIZES_M
 
 
 def build_strip(settings: StripConfig) -> Strip:
@@ -40,3 +42,16 @@ def build_plan(settings: SiteConfig) -> FloorPlan:
         raise ConfigError("a floor plan is needed", place="site.file", expected="site.file=PATH")
     options = {} if settings.level is None else {"level": settings.level}
     return read_plan(settings.file, **options)
+
+
+def check_invented(settings: SiteConfig) -> None:
+    """Refuse sites that nobody can invent, before a run folder is made for them.
+
+    Raises:
+        ConfigError: no families, unknown ones, or a size out of range.
+    """
+    known = bool(settings.families) and set(settings.families) <= FAMILIES.keys()
+    hold("site.families", known, f"some of {', '.join(FAMILIES)}", settings.families)
+    low, high = SIZES_M
+    for key, size in (("site.width_m", settings.width_m), ("site.depth_m", settings.depth_m)):
+        hold(key, low <= size <= high, f"{low:g} to {high:g} metres", size)

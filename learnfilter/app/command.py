@@ -15,7 +15,7 @@ from typing import Any, NoReturn
 import hydra
 from hydra import compose, initialize_config_dir
 from hydra.core.hydra_config import HydraConfig
-from hydra.errors import HydraException
+from hydra.errors import HydraException, OverrideParseException
 from omegaconf import DictConfig, OmegaConf
 from omegaconf.errors import OmegaConfBaseException
 
@@ -29,8 +29,8 @@ from learnfilter.core.errors import ConfigError, InputError
 
 # In a sweep the composing library shall neither log nor leave folders of its own about.
 _QUIET = (
-    "hydra/job_logging=disabled",
-    "hydra/hydra_logging=disabled",
+    "hydra/job_logging=none",
+    "hydra/hydra_logging=none",
     "hydra.output_subdir=null",
     "hydra.sweep.subdir=.",
     "hydra.job.config.override_dirname.exclude_keys=[name,runs,threads]",
@@ -49,6 +49,10 @@ def run_command(words: list[str]) -> int:
         return _mistake(who, _explained(error, verb))
     except OmegaConfBaseException as error:
         return _mistake(who, str(error).splitlines()[0])
+    except OSError as error:
+        if error.filename is None:
+            return _our_fault(who, error)
+        return _mistake(who, str(InputError("cannot be used", file=error.filename, got=error.strerror)))
     except KeyboardInterrupt:
         print(f"{who}: stopped", file=sys.stderr)
         return 130
@@ -143,6 +147,15 @@ def _explained(error: HydraException, verb: str) -> str:
         known = flat(OmegaConf.to_container(compose_settings(verb, [])))
         near = " or ".join(get_close_matches(wrong_key[1], known))
         return str(ConfigError("there is no such setting", place=wrong_key[1], expected=near or None))
+    if isinstance(error, OverrideParseException):
+        expected = """key=value, with quotes where the value has spaces or brackets: "key='a (b)'\""""
+        return str(ConfigError("cannot be read", place=error.override, expected=expected))
+    wrong_choice = re.search(
+        r"Could not find '(\w+)/([^']+)'\n+Available options in '[^']*':\n((?:\t.+\n?)+)", text
+    )
+    if wrong_choice:
+        group, got, choices = wrong_choice.groups()
+        return str(ConfigError("no such choice", place=group, expected=" or ".join(choices.split()), got=got))
     return " ".join(re.split(r"\n(?:Config search path|See https?:)", text)[0].split())
 
 

@@ -7,6 +7,7 @@ checked when a composed configuration becomes objects, and messages name the who
 from __future__ import annotations
 
 from dataclasses import dataclass, fields, make_dataclass
+from pathlib import Path
 from typing import Any, TypeVar, get_type_hints
 
 from omegaconf import DictConfig, OmegaConf
@@ -34,6 +35,7 @@ class Common:
     threads: int | None
 
     def __post_init__(self) -> None:
+        hold("name", self.name is None or self.name == Path(self.name).name, "no folders in it", self.name)
         hold("seed", self.seed >= 0, "a whole number not below 0", self.seed)
         hold("threads", self.threads is None or self.threads >= 1, "null or at least 1", self.threads)
 

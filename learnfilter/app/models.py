@@ -116,5 +116,12 @@ def settings_of(run: Path) -> TrainConfig:
         )
     composed = OmegaConf.to_container(OmegaConf.load(record))
     assert isinstance(composed, dict)
+    if "train" not in composed:
+        raise ConfigError(
+            "made by another verb",
+            file=record,
+            place="model",
+            expected="a run of `learnfilter train` or demo",
+        )
     known = {key: composed[key] for key in TrainConfig.__dataclass_fields__ if key in composed}
     return typed(OmegaConf.create(known), TrainConfig)

@@ -51,9 +51,10 @@ def score_tables(found: Judgement) -> tuple[Table, ...]:
 
 def forests(found: Judgement) -> tuple[Forest, ...]:
     """Paired differences, learned minus best analytic."""
-    rows_located = tuple((f"after {d.mark} strips", _bar(d.located)) for d in found.differences)
-    rows_nll = tuple((f"after {d.mark} strips", _bar(d.nll)) for d in found.differences)
-    below, above = f"{found.analytic} better", f"{LEARNED} better"
+    label = {d.mark: f"after {d.mark} strip{'s' * (d.mark > 1)}" for d in found.differences}
+    rows_located = tuple((label[d.mark], _bar(d.located)) for d in found.differences)
+    rows_nll = tuple((label[d.mark], _bar(d.nll)) for d in found.differences)
+    below, above = found.analytic, LEARNED
     note = f"{found.analytic} was chosen among the analytic models on validation drives."
     return (
         Forest("Located share gained, paired", rows_located, "share of drives", below, above, "+.2f", note),
@@ -95,7 +96,7 @@ def size_table(models: Mapping[str, Stored], found: Judgement) -> Table:
     )
     columns = (Column("model"), Column("trained weights", ",d"), Column("ms a strip", ".1f"))
     note = "Time of a whole filter step on this laptop, median; it says nothing of the robot's."
-    return Table("Sizes and timings", columns, rows, note)
+    return Table("Weights and time", columns, rows, note)
 
 
 def provenance(settings: Any, extra: Mapping[str, str]) -> dict[str, str]:
@@ -114,6 +115,12 @@ def settings_text(settings: Any) -> str:
     return OmegaConf.to_yaml(OmegaConf.create(asdict(settings)))
 
 
+def _terse(share: Any) -> str:
+    """A share with its interval, where there is one."""
+    interval = f" ({share.low:.2f}-{share.high:.2f})" if np.isfinite(share.low) else ""
+    return f"{share.value:.2f}{interval}"
+
+
 def table_lines(found: Judgement) -> Sequence[str]:
     """The located table and the verdict for the terminal."""
     marks = sorted({score.mark for score in found.scores})
@@ -122,7 +129,5 @@ def table_lines(found: Judgement) -> Sequence[str]:
     lines = [f"{'located share after':<{width}}  " + "".join(f"{m:>18}" for m in marks)]
     for name in dict.fromkeys(score.contender for score in found.scores):
         row = [cell[name, m].located for m in marks]
-        lines.append(
-            f"{name:<{width}}  " + "".join(f"{i.value:>6.2f} ({i.low:.2f}-{i.high:.2f})" for i in row)
-        )
+        lines.append(f"{name:<{width}}  " + "".join(f"{_terse(i):>18}" for i in row))
     return [*lines, "", found.verdict.sentence, found.verdict.confidence]

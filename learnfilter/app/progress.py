@@ -40,23 +40,36 @@ def progress(label: str, stream: TextIO | None = None) -> Iterator[Tick]:
         TextColumn("{task.fields[note]}"),
     )
     with Progress(*columns, console=Console(file=stream)) as bar:
-        task = bar.add_task(label, total=None, note="")
-        yield lambda done, total, note: bar.update(task, completed=done, total=total, note=note)
+        task, last = bar.add_task(label, total=None, note=""), 0
+
+        def tick(done: int, total: int, note: str) -> None:
+            nonlocal last
+            if done < last:  # another stage begins: its pace is its own
+                bar.reset(task, total=total)
+            last = done
+            bar.update(task, completed=done, total=total, note=note)
+
+        yield tick
 
 
 def plain_ticks(label: str, stream: TextIO, clock: Callable[[], float] = time.monotonic) -> Tick:
-    """A tick that prints a line now and then, and one at the end."""
-    start = clock()
-    said = start
+    """A tick that prints a line now and then, and one at the end.
+
+    Counting begins anew where `done` falls back: several stages may share one tick.
+    """
+    start, said, first, last = clock(), clock(), 0, 0
 
     def tick(done: int, total: int, note: str) -> None:
-        nonlocal said
+        nonlocal start, said, first, last
         now = clock()
+        if done < last:
+            start, first = now, done
+        last = done
         if done < total and now - said < PLAIN_EVERY_S:
             return
         said = now
-        left = (now - start) * (total - done) / done if done else float("nan")
-        tail = f", {left:.0f} s left" if 0 < done < total else ""
+        left = (now - start) * (total - done) / max(done - first, 1)
+        tail = f", {left:.0f} s left" if first < done < total else ""
         print(f"{label}: {done} of {total}{tail}{' ' + note if note else ''}", file=stream, flush=True)
 
     return tick

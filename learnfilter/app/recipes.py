@@ -103,3 +103,4 @@ class StudyConfig:
             hold(f"study.{key}", getattr(self, key) >= 1, "at least 1", getattr(self, key))
         hold("study.rows", self.rows >= 2, "at least 2", self.rows)
         hold("study.mark", self.mark in MARKS, f"one of {MARKS}", self.mark)
+        hold("study.mark", self.mark <= self.rows, f"at most study.rows={self.rows}", self.mark)

@@ -129,7 +129,8 @@ def seen_surfaces(site: RobotSite, grid: PoseGrid, every: int = 5) -> FloorPlan:
     """What a bundle knows of its site, as short strokes where rings end: a backdrop when no plan is given."""
     cells = site.cells[::every]
     angle = site.layout.ring_angles()
-    ranges = np.where(site.unsure[::every], np.nan, site.range_m[::every]).astype(float)
+    ranges = site.range_m[::every].astype(float)
+    ranges[site.unsure[::every] | ~np.isfinite(ranges)] = np.nan
     x = grid.x_centres()[cells[:, 1], None] + ranges * np.cos(angle)
     y = grid.y_centres()[cells[:, 0], None] + ranges * np.sin(angle)
     strokes = np.stack([x, y, np.roll(x, -1, axis=1), np.roll(y, -1, axis=1)], axis=-1).reshape(-1, 4)

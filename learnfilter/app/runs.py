@@ -41,6 +41,7 @@ class RunFolder:
 
     def finish(self, results: dict[str, Any]) -> dict[str, Any]:
         """Write summary.json and return it; call last, since it marks the run as complete."""
+        _record(self.path, self.settings)
         summary = {
             "schema": SUMMARY_SCHEMA,
             "verb": self.verb,
@@ -60,7 +61,8 @@ def open_run(verb: str, name: str, settings: Common, *, replace: bool = False) -
     Args:
         verb, name: give the folder, `<runs>/<verb>/<name>`.
         settings: of the verb.
-        replace: for verbs that finish in seconds and take nothing up: other settings replace the run.
+        replace: for verbs that finish in seconds and take nothing up: other settings replace the run,
+            and are recorded once it is finished, so that a mistake leaves an earlier run whole.
 
     Raises:
         ConfigError: the folder holds a run with other settings, or cannot be written.
@@ -72,11 +74,17 @@ def open_run(verb: str, name: str, settings: Common, *, replace: bool = False) -
     if earlier is not None and not replace:
         _refuse_mixture(path, earlier, mine)
     try:
-        with whole_file(record) as beside:
-            beside.write_text(OmegaConf.to_yaml(OmegaConf.create(mine)), encoding="utf-8")
+        path.mkdir(parents=True, exist_ok=True)
+        if not replace:
+            _record(path, mine)
     except OSError as error:
         raise ConfigError("cannot write here", file=path, place="runs", got=error.strerror) from error
     return RunFolder(path, verb, mine, time.time(), resumed=earlier is not None)
+
+
+def _record(path: Path, settings: dict[str, Any]) -> None:
+    with whole_file(path / "config.yaml") as beside:
+        beside.write_text(OmegaConf.to_yaml(OmegaConf.create(settings)), encoding="utf-8")
 
 
 def _refuse_mixture(path: Path, earlier: Any, mine: dict[str, Any]) -> None:

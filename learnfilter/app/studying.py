@@ -6,7 +6,7 @@ from collections.abc import Sequence
 from pathlib import Path
 from typing import NamedTuple
 
-from learnfilter.app.build import build_conditions, build_plan, build_strip
+from learnfilter.app.build import build_conditions, build_plan, build_strip, check_invented
 from learnfilter.app.config import SiteConfig
 from learnfilter.app.grounds import Rehearsal, build_lattices, drives_on, make_grounds
 from learnfilter.app.progress import progress
@@ -62,6 +62,7 @@ def study_subject(
     lattices, strip = build_lattices(settings), build_strip(settings.strip)
     conditions = build_conditions(condition)
     if site.file is None:
+        check_invented(site)
         rehearsal = Rehearsal(
             tuple(site.families),
             study.sites,

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any
 
 from learnfilter.app.config import (
     Common,
@@ -68,6 +69,11 @@ class AblateConfig(Common):
     study: StudyConfig
     drives: list[str]
 
+    def __post_init__(self) -> None:
+        super().__post_init__()
+        on_plan = self.site.file is not None or not self.drives
+        hold("site.file", on_plan, "the plan on which `drives` were recorded", self.site.file)
+
 
 @dataclass
 class ExportConfig(Common):
@@ -124,9 +130,12 @@ class LabelConfig(Common):
     contender: str
     drive: str
     depth_kind: str | None
-    known: dict[int, list[float]]
+    known: dict[int, list[Any]] | None  # of numbers: the composing library takes no whole ones for float
 
     def __post_init__(self) -> None:
         super().__post_init__()
-        good = all(row >= 0 and len(pose) == 3 for row, pose in self.known.items())
+        good = all(
+            row >= 0 and len(pose) == 3 and all(type(number) in (int, float) for number in pose)
+            for row, pose in (self.known or {}).items()
+        )
         hold("known", good, "row: [x_m, y_m, heading_deg]", self.known)

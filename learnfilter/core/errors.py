@@ -40,11 +40,10 @@ class InputError(LearnfilterError):
     def _text(self) -> str:
         where = ", ".join(str(part) for part in (self.file, self.place) if part is not None)
         text = f"{where}: {self.message}" if where else self.message
-        if self.expected is not None:
-            text += f"; expected {self.expected}"
-        if self.got is not None:
-            text += f", got {self.got}"
-        return text
+        if self.expected is None:
+            return text if self.got is None else f"{text} ({self.got})"
+        text += f"; expected {self.expected}"
+        return text if self.got is None else f"{text}, got {self.got}"
 
 
 class PlanError(InputError):

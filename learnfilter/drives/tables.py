@@ -79,6 +79,7 @@ def iter_rows(
     names = used_columns(table.present, path)
     kind = depth_kind or table.members.get("depth_kind", "range")
     sensor, before_s, row = None, -math.inf, 0
+    came_back = measured = False
     for columns in table.batches(batch_rows, names):
         check_rows(columns, file=path, first_row=row, before_s=before_s)
         if sensor is None:
@@ -86,9 +87,16 @@ def iter_rows(
             stretch = _stretch(sensor, kind, path)
             if math.isinf(sensor.max_range_m):
                 sensor = replace(sensor, max_range_m=_largest_reading(table, stretch))
-        yield _drive(columns, sensor, stretch, table.members, path)
+        drive = _drive(columns, sensor, stretch, table.members, path)
+        came_back |= bool(np.isfinite(columns["depth_m"]).any())
+        measured |= bool(np.isfinite(drive.depth_m).any())
+        yield drive
         row, before_s = row + len(columns["time_s"]), columns["time_s"][-1]
     refuse_empty(row, path)
+    if came_back and not measured:
+        raise DriveError(
+            "no reading is within the strip's ranges", file=path, place="column depth_m", expected="metres"
+        )
 
 
 def write_drive(drive: Drive, path: str | Path) -> None:

@@ -65,7 +65,7 @@ def _scale(plan: FloorPlan) -> list[Finding]:
     extent = max(right - left, top - bottom)
     low, high = PLAUSIBLE_EXTENT_M
     if not low <= extent <= high:
-        message = f"The plan is {extent:.3g} m across, which is not a building in metres."
+        message = f"The plan is {extent:,.2f} m across, which is not a building in metres."
         return [Finding("warning", "scale", message, None, "Check the units of the file.")]
     widths = _lengths(plan)[plan.kind == DOOR]
     low, high = PLAUSIBLE_DOOR_M

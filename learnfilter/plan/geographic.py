@@ -158,12 +158,13 @@ def _levels(feature: Feature, default: str | None = None) -> set[str]:
 def _chosen_level(path: Path, features: Iterable[Feature], level: str | int | None) -> str | None:
     known = sorted({name for feature in features for name in _levels(feature)})
     if level is None and len(known) > 1:
-        raise PlanError("several levels", file=path, expected="level=", got=", ".join(known))
+        raise PlanError("the plan has several levels", file=path, place="level", expected=" or ".join(known))
     if level is not None and str(level) not in known:
         raise PlanError(
             "no such level",
             file=path,
-            expected=", ".join(known) or "no level= (the plan has none)",
+            place="level",
+            expected=" or ".join(known) or "none, as the plan has no levels",
             got=level,
         )
     return str(level) if level is not None else (known[0] if known else None)

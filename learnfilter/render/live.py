@@ -27,16 +27,29 @@ OUTSIDE_REACH_M = 0.75
 # If the indoors is less than this share of all clear area within the plan's bounds, the building
 # stands open (an undrawn gate, a site without outer walls) and the outside is not told from it.
 INDOOR_SHARE = 0.1
+# Half a kilometre square in cells of 0.25 m; larger plans are most likely not in metres.
+MOST_CELLS = 4_000_000
 # How far from a free point a seed may have been clicked.
 SEED_SLACK_M = 1.0
 
 
 def grid_for(plan: FloorPlan, headings: int, cell_m: float) -> PoseGrid:
-    """The lattice that covers the plan's bounds and one cell more on each side."""
+    """The lattice that covers the plan's bounds and one cell more on each side.
+
+    Raises:
+        ConfigError: it would be empty.
+        PlanError: it would be beyond what a laptop holds.
+    """
     if headings < 1 or not cell_m > 0:
         raise ConfigError("the grid is empty", place="grid", expected="headings >= 1, cell_m > 0")
     left, bottom, right, top = plan.bounds
     rows, columns = (int(np.ceil(size / cell_m - 1e-9)) + 2 for size in (top - bottom, right - left))
+    if rows * columns > MOST_CELLS:
+        raise PlanError(
+            f"too large for cells of {cell_m} m", place=plan.name,
+            expected=f"at most {MOST_CELLS:,} cells: check the file's units, or take larger cells",
+            got=f"{rows * columns:,}",
+        )  # fmt: skip
     return PoseGrid(headings, rows, columns, cell_m, left - cell_m, bottom - cell_m)
 
 
@@ -165,7 +178,10 @@ def _around_seed(
     nearest = np.unravel_index(np.where(clear, to_seed, np.inf).argmin(), clear.shape)
     if not clear.any() or to_seed[nearest] > SEED_SLACK_M:
         raise PlanError(
-            "no free place for the robot near the seed", place="seed", expected="a free point", got=seed
+            "no free place for the robot near the seed",
+            place="the plan's seed",
+            expected="a free point",
+            got=seed,
         )
     parts, _ = ndimage.label(clear if outdoors[nearest] else clear & ~outdoors)
     return parts == parts[nearest]

@@ -98,9 +98,10 @@ def _axes(frame: Frame, plan: FloorPlan) -> Markup:
             tag("text", f"{x:g} m", x=float(x), y=y + 3.6 * frame.unit, font_size=size, text_anchor="middle")
         )
     for y in ticks(bottom, top)[1:]:
-        parts.append(tag("path", class_="tick", d=f"M{frame.left:.3f} {-y:.3f}h{frame.unit:.3f}"))
-        after = {"x": frame.left + 1.3 * frame.unit, "y": float(-y) - 0.5 * frame.unit}
-        parts.append(tag("text", f"{y:g}", **after, font_size=size))
+        x = left - 1.7 * frame.unit  # right of its label, where it is no minus sign
+        parts.append(tag("path", class_="tick", d=f"M{x:.3f} {-y:.3f}h{frame.unit:.3f}"))
+        before = {"x": float(x) - 0.4 * frame.unit, "y": float(-y) + 0.8 * frame.unit}
+        parts.append(tag("text", f"{y:g}", **before, font_size=size, text_anchor="end"))
     return tag("g", *parts, class_="scale")
 
 

@@ -53,11 +53,11 @@ def _number(cell: Cell) -> float:
 
 
 def _best_rows(content: Table, column: int) -> set[int]:
-    """Rows that hold the column's best number; none when fewer than two rows compete."""
+    """Rows that hold the column's best number; none where no row beats another."""
     if not content.columns[column].best:
         return set()
     values = {n: v for n, row in enumerate(content.rows) if not math.isnan(v := _number(row[column]))}
-    if len(values) < 2:
+    if len(set(values.values())) < 2:
         return set()
     best = (max if content.columns[column].best == "high" else min)(values.values())
     return {n for n, value in values.items() if value == best}

@@ -1,5 +1,6 @@
 """The command line as its user meets it: exit codes, messages, help, sweeps."""
 
+import logging
 import os
 import subprocess
 import sys
@@ -50,6 +51,11 @@ def outcome(verb_raises: BaseException, monkeypatch, capsys) -> tuple[int, str]:
         (["plan", "--quick"], "--quick"),
         (["plan", "--config-dir", "nowhere"], "nowhere"),
         (["plan", "site.file=gone.geojson"], "gone.geojson"),
+        (["plan", "site.file=My plan (2).geojson"], "quotes"),
+        (["plan", f"site.file={SQUARE}", "name=a/b"], "a/b"),
+        (["survey", f"site.file={SQUARE}", "strip=radar"], "scanner-180"),
+        (["ablate", "drives=[a.parquet]"], "site.file"),
+        (["label", f"site.file={SQUARE}", "drive=a.csv", "known={0: [1, 2]}"], "heading_deg"),
         (["rehearse", "site.families=[attics]"], "offices"),
         (["rehearse", "condition.people=-1"], "condition.people"),
         (["rehearse", "site.width_m=3"], "site.width_m"),
@@ -67,6 +73,12 @@ def test_an_input_error_is_one_line(monkeypatch, capsys):
     """The error's own text is the message."""
     code, error = outcome(PlanError("no walls", file="a.geojson"), monkeypatch, capsys)
     assert (code, error) == (2, "learnfilter plan: a.geojson: no walls\n")
+
+
+def test_a_file_that_cannot_be_written_is_the_users_to_mend(monkeypatch, capsys):
+    """A full disk is not our fault, and the line names the file."""
+    code, error = outcome(OSError(28, "No space left on device", "a.csv"), monkeypatch, capsys)
+    assert (code, error) == (2, "learnfilter plan: a.csv: cannot be used (No space left on device)\n")
 
 
 def test_an_interrupt_ends_with_130(monkeypatch, capsys):
@@ -126,6 +138,12 @@ def test_a_sweep_runs_each_value_in_a_folder_of_its_own(tmp_path):
         path.name.split("site.file")[0] for path in (tmp_path / "runs" / "plan").iterdir() if path.is_dir()
     }
     assert folders == {"s,seed=1,", "s,seed=2,"}
+
+
+def test_a_sweep_leaves_our_warnings_on():
+    """What a plan's reader ignores is said in the jobs of a sweep too."""
+    assert run_command(["plan", "-m", f"site.file={SQUARE}", "name=s"]) == 0
+    assert not logging.getLogger("learnfilter.plan.geographic").disabled
 
 
 def test_a_sweep_with_a_mistake_ends_with_2(capsys):

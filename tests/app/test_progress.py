@@ -34,6 +34,18 @@ def test_nothing_done_yet_promises_no_time():
     assert stream.getvalue() == "train: 0 of 10\n"
 
 
+def test_a_second_stage_is_timed_by_its_own_pace():
+    """Ten slow steps, then ten of a second each: after six of those, four are left."""
+    stream, clock = io.StringIO(), Clock()
+    tick = plain_ticks("train", stream, clock)
+    clock.now += 1000
+    tick(10, 10, "")
+    for done in range(1, 7):
+        clock.now += 1.0
+        tick(done, 10, "")
+    assert stream.getvalue().splitlines()[-1] == "train: 5 of 10, 5 s left"
+
+
 class Terminal(io.StringIO):
     def isatty(self) -> bool:
         return True

@@ -40,11 +40,14 @@ def test_other_settings_do_not_mix_into_a_run(settings):
 
 
 def test_a_run_that_may_be_replaced_is(settings, tmp_path):
-    """Verbs of a few seconds start afresh."""
-    open_run("plan", "a", settings)
+    """Verbs of a few seconds start afresh; until they end, what was there stays whole."""
+    open_run("plan", "a", settings).finish({})
     settings.seed = 4
-    open_run("plan", "a", settings, replace=True)
-    assert OmegaConf.load(tmp_path / "plan" / "a" / "config.yaml").seed == 4
+    run = open_run("plan", "a", settings, replace=True)
+    seeds = [OmegaConf.load(tmp_path / "plan" / "a" / "config.yaml").seed]
+    run.finish({})
+    seeds.append(OmegaConf.load(tmp_path / "plan" / "a" / "config.yaml").seed)
+    assert seeds == [3, 4]
 
 
 def test_a_moved_run_can_be_taken_up(settings, tmp_path):

@@ -52,6 +52,24 @@ def test_plan_with_an_error_finding_ends_with_2_and_says_which(tmp_path, capsys)
     assert Path("runs/plan/tiny/plan.png").exists()
 
 
+def test_plan_counts_what_is_too_much_to_list(tmp_path, capsys):
+    """Twelve closed rooms, the largest of them the main floor: of the eleven cut off eight are listed."""
+    rooms = [[[5 * n, 0], [5 * n + 4, 0], [5 * n + 4, 4], [5 * n, 4], [5 * n, 0]] for n in range(12)]
+    rooms[0] = [[0, 0], [4, 0], [4, 5], [0, 5], [0, 0]]
+    plan = json.loads(SQUARE.read_text())
+    (wall,) = plan["features"]
+    del plan["learnfilter"]["seed"]
+    plan["features"] = [
+        wall | {"geometry": {"type": "LineString", "coordinates": outline}} for outline in rooms
+    ]
+    (tmp_path / "rooms.geojson").write_text(json.dumps(plan))
+    assert run_command(["plan", "site.file=rooms.geojson"]) == 0
+    said = capsys.readouterr().out
+    found = json.loads(Path("runs/plan/rooms/summary.json").read_text())["results"]["findings"]
+    assert (said.count("are cut off"), said.count("3 more like the one above")) == (8, 1)
+    assert [finding["what"] for finding in found].count("island") == 11
+
+
 def test_plan_does_not_overwrite_what_it_reads(tmp_path):
     """The user's file is never lost."""
     mine = tmp_path / "mine.geojson"

@@ -81,7 +81,7 @@ def strips(seed=0, count=3, layout=LAYOUT, missing=0.1):
 @cache
 def colour_fit():
     """A colour model whose background is broad; half of a strip's brightness is taken out."""
-    background = log_colour(np.random.default_rng(1).uniform(0, 1, (300, 3)))
+    background = log_colour(np.random.default_rng(1).uniform(0, 1, (256, 3)))
     return ColourFit(0.5, 3.0, 0.5, float(background.mean()), background)
 
 

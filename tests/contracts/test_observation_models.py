@@ -10,8 +10,10 @@ from torch.testing import assert_close
 
 from learnfilter.core.errors import InputError
 from learnfilter.core.strip import Strip, even_strip, lay_on_ring
+from learnfilter.observe.contract import Strips
 from learnfilter.observe.describe import describe, rebuild
 from learnfilter.plan.readers import read_plan
+from learnfilter.render import cast_rings
 from tests.contracts import small
 from tests.contracts.small import LAYOUT, MODELS, PER_HEADING, TWO_LOOKS, altered, score, small_site, strips
 
@@ -170,6 +172,25 @@ def test_a_model_of_an_unknown_kind_is_refused(facts):
     """By an error that names the known ones."""
     with pytest.raises(InputError, match="beam or endpoint"):
         rebuild(LAYOUT, facts, {})
+
+
+@pytest.mark.parametrize("name", ["beam", "blend", "matcher"])
+def test_what_the_plan_shows_at_a_pose_scores_best_there(name):
+    """Rays cast along the raw columns' own bearings, 0, 90 and 225 degrees turned: the best of all poses is
+    where they were cast."""
+    site, step = small_site(), 2 * np.pi / 16
+    for cell, turned in ((20, 0), (70, 90), (110, 225)):
+        heading = round(np.radians(turned) / step)
+        angles = np.radians(turned) + np.asarray(small.CIRCLE.bearings_rad)
+        x, y = (site.grid.x_centres()[site.cells[cell, 1:]], site.grid.y_centres()[site.cells[cell, :1]])
+        range_m, _, finish = cast_rings(small.small_plan(), x, y, angles, small.MAX_RANGE_M)
+        rgb = np.where(finish[..., None] >= 0, site.palette[finish], np.nan)
+        depth, rgb = LAYOUT.lay(range_m), LAYOUT.lay(rgb, axis=1)
+        seen = Strips(
+            torch.tensor(depth), torch.tensor(rgb, dtype=torch.float32), torch.tensor(LAYOUT.present())
+        )
+        scores = score(MODELS[name](), seen, site)[0]
+        assert np.unravel_index(int(scores.argmax()), scores.shape) == (cell, heading)
 
 
 def twins(site, cell, heading):

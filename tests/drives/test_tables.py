@@ -228,6 +228,14 @@ def test_readings_out_of_range_are_no_returns(tmp_path, suffix):
     np.testing.assert_array_equal(drive.depth_m, np.float32([[0.1, 5.0], [NAN, NAN]]))
 
 
+def test_depths_in_millimetres_are_found_out(tmp_path):
+    """No reading of a whole drive lies within the sensor's ranges, although some came back."""
+    path = tmp_path / "mm.csv"
+    path.write_text("time_s,forward_m,left_m,turn_rad,depth_m_000\n0,0,0,0,1500\n1,0.1,0,0,\n")
+    with pytest.raises(DriveError, match=r"mm\.csv, column depth_m: no reading.*expected metres"):
+        read_drive(path, Strip((0.0,), max_range_m=6.0))
+
+
 @pytest.mark.parametrize("suffix", SUFFIXES)
 def test_without_a_maximum_range_nothing_is_lost(tmp_path, suffix):
     """The largest reading of the whole table serves, also when it lies in a later run."""

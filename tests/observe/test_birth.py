@@ -1,4 +1,12 @@
-"""A matcher before any training filters like the analytic model it was born from."""
+"""A matcher before any training filters like the analytic model it was born from.
+
+How many landmarks colour needs depends on the kernel that the fit happens to choose, so both kernels met
+so far are here.  Measured gaps, nats of the true pose after one strip (mean over sites; worst site):
+
+    fitted to                  spread   10 landmarks    16 landmarks
+    8 sites, 1 drive on each   1.2      -0.004; 0.04    0.006; 0.04
+    4 sites, 2 drives on each  0.8       0.086; 0.29   -0.002; 0.04
+"""
 
 import numpy as np
 import pytest
@@ -14,21 +22,27 @@ STRIP = Strip(even_strip(-43.59375, 2.8125, 32), 0.15, 6.0)
 FAMILIES = ("offices", "aisles", "hall", "partitions")
 # near those that tuning finds: after it a strip of 32 columns counts for about six
 EXPONENTS = {"beam": 0.18, "colour": 0.1}
+GROUNDS = {"broad kernel": (8, 1, 0), "narrow kernel": (4, 2, 3)}  # sites, drives on each, seed
+TOO_FEW = pytest.mark.xfail(reason="10 landmarks are too few for a narrow kernel: 0.086 nats, 16 cure it")
 
 
 @pytest.fixture(scope="module")
 def rehearsed():
-    """Eight invented sites with stills, and models fitted to a drive on each."""
+    """By name: invented sites with stills, and an analytic blend fitted to drives on them."""
     layout = lay_on_ring(STRIP, 32, 4)
     lattices = Lattices(layout, 0.25, 32, 0.2, 6.0, "unsure", 0.2, 0.2)
-    rehearsal = Rehearsal(FAMILIES, 8, 1, 16, 64, 8.0, 8.0, Conditions())
-    grounds = make_grounds(rehearsal, STRIP, lattices, 0, "birth", lambda *told: None).grounds
-    fits = fit_analytic(grounds, 6.0, np.random.default_rng(0))
-    blend = make_blend("beam+colour", layout, fits)
-    with torch.no_grad():
-        for name, exponent in EXPONENTS.items():
-            blend.log_exponent[name].fill_(np.log(exponent))
-    return grounds, fits, blend
+
+    def make(sites, drives, seed):
+        rehearsal = Rehearsal(FAMILIES, sites, drives, 16, 64, 8.0, 8.0, Conditions())
+        grounds = make_grounds(rehearsal, STRIP, lattices, seed, "birth", lambda *told: None).grounds
+        fits = fit_analytic(grounds, 6.0, np.random.default_rng(0))
+        blend = make_blend("beam+colour", layout, fits)
+        with torch.no_grad():
+            for name, exponent in EXPONENTS.items():
+                blend.log_exponent[name].fill_(np.log(exponent))
+        return grounds, fits, blend
+
+    return {name: make(*how) for name, how in GROUNDS.items()}
 
 
 def one_strip_nats(model, grounds):
@@ -43,22 +57,33 @@ def one_strip_nats(model, grounds):
     return float(torch.stack(nats).mean())
 
 
-def born(rehearsed, **settings):
+def born(rehearsal, **settings):
     """An untrained matcher, residual and all."""
-    _, fits, blend = rehearsed
+    _, fits, blend = rehearsal
     birth = birth_of(blend, fits, BirthSettings(**settings))
     return Matcher(blend.layout, birth, MatcherShape(), torch.Generator().manual_seed(0))
 
 
-def test_an_untrained_matcher_is_as_good_as_its_blend(rehearsed):
-    """Within 0.05 nats of the true pose after one strip."""
-    grounds, _, blend = rehearsed
-    assert abs(one_strip_nats(born(rehearsed), grounds) - one_strip_nats(blend, grounds)) < 0.05
+@pytest.mark.parametrize(
+    ("name", "settings"),
+    [
+        ("broad kernel", {}),
+        pytest.param("narrow kernel", {}, marks=TOO_FEW),
+        ("broad kernel", {"colour_rank": 16}),
+        ("narrow kernel", {"colour_rank": 16}),
+    ],
+)
+def test_an_untrained_matcher_is_as_good_as_its_blend(rehearsed, name, settings):
+    """Within 0.05 nats of the true pose after one strip, as settings are by default and with 16 landmarks."""
+    grounds, _, blend = rehearsed[name]
+    gap = one_strip_nats(born(rehearsed[name], **settings), grounds) - one_strip_nats(blend, grounds)
+    assert abs(gap) < 0.05
 
 
 def test_without_factors_a_matcher_is_born_ignorant(rehearsed):
     """Ranks of zero leave the analytic start out: every pose scores zero."""
-    (ground, *_), _, _ = rehearsed
+    (ground, *_), _, _ = rehearsed["narrow kernel"]
     with torch.no_grad():
-        scores = born(rehearsed, range_rank=0, colour_rank=0)(ground.stills[0], ground.site)
+        model = born(rehearsed["narrow kernel"], range_rank=0, colour_rank=0)
+        scores = model(ground.stills[0], ground.site)
     assert float(scores.abs().max()) < 1e-4  # float32 normalisers

@@ -11,7 +11,7 @@ from learnfilter.observe.contract import Strips
 from learnfilter.observe.endpoint import EndpointFit, EndpointModel, end_point_density, fit_end_points
 from learnfilter.observe.fitting import Sample
 from learnfilter.plan.floorplan import NO_FINISH, SHUT, WALL, FloorPlan
-from tests.contracts.small import FINE, LAYOUT, MAX_RANGE_M, mixture_fit, render, small_site
+from tests.contracts.small import CIRCLE, FINE, LAYOUT, MAX_RANGE_M, mixture_fit, render, small_site, strips
 
 
 @pytest.mark.parametrize(
@@ -28,6 +28,27 @@ def test_a_reading_that_did_not_come_back_is_skipped():
     depth = torch.full((1, LAYOUT.columns), torch.nan)
     strips = Strips(depth, torch.full((1, LAYOUT.columns, 3), torch.nan), torch.tensor(LAYOUT.present()))
     assert not EndpointModel(LAYOUT, MAX_RANGE_M, EndpointFit())(strips, small_site()).any()
+
+
+def test_scores_are_sums_over_end_points():
+    """Straight from the raw columns' bearings: x + r cos(heading + bearing) looked up in the field, whose
+    distances the model rounds to 2 cm; a reading that leaves the field counts as 2 m off."""
+    site, seen, fit = small_site(), strips(), EndpointFit()
+    bearings, size = np.asarray(CIRCLE.bearings_rad), 0.25
+    depth = seen.depth_m.numpy()[:, np.argsort(LAYOUT.source)].astype(float)  # back in the raw order
+    out = np.zeros((3, site.n_cells, 16))
+    for h in range(16):
+        for n, (row, column) in enumerate(site.cells):
+            angle = h * 2 * np.pi / 16 + bearings
+            i = np.floor(((row + 0.5) * 0.5 + depth * np.sin(angle)) / size)
+            j = np.floor(((column + 0.5) * 0.5 + depth * np.cos(angle)) / size)
+            inside = (i >= 0) & (i < site.field_m.shape[0]) & (j >= 0) & (j < site.field_m.shape[1])
+            i, j = np.where(inside, i, 0).astype(int), np.where(inside, j, 0).astype(int)
+            distance = np.where(inside, np.minimum(site.field_m[i, j], 2.0), 2.0)
+            nats = np.log(end_point_density(0.02 * np.rint(distance / 0.02), fit, MAX_RANGE_M))
+            out[:, n, h] = np.where(np.isnan(depth), 0, nats).sum(axis=1)
+    actual = EndpointModel(LAYOUT, MAX_RANGE_M, fit)(seen, site).numpy()
+    assert_allclose(actual, out, atol=1e-3)  # float32
 
 
 def rooms():

@@ -27,11 +27,12 @@ def best_cells(best: str, *values) -> list[int]:
         ("low", (Interval(3.0, 1, 5), Interval(2.0, 1, 9)), [1]),
         ("low", (NAN, 2.0, 3.0), [1]),
         ("high", (None, 2.0), []),
+        ("low", (2.0, 2.0), []),
         ("", (1.0, 2.0), []),
     ],
 )
 def test_the_best_of_a_column_is_marked_in_words(best, values, expected):
-    """Ties share the mark; missing values do not compete; one alone is no winner."""
+    """Ties share the mark; missing values do not compete; where none is worse, none wins."""
     assert best_cells(best, *values) == expected
 
 

@@ -47,7 +47,7 @@ def trainer(folder, seed=0):
 
 def matcher(folder, seed=0):
     """Bytes of all files that two short stages leave."""
-    stages = [StageSettings(name, 4, validate_every=2) for name in ("matching", "filter")]
+    stages = [StageSettings(name, 3, validate_every=3) for name in ("matching", "filter")]
     trainer(folder, seed).train_matcher(birth(), SHAPE, LAYOUT, MotionSettings(), *stages)
     return {path.name: path.read_bytes() for path in Path(folder).iterdir()}
 

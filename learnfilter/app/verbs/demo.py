@@ -13,9 +13,10 @@ from __future__ import annotations
 
 import time
 from dataclasses import replace
+from pathlib import Path
 from typing import Any
 
-from learnfilter.app.build import build_plan
+from learnfilter.app.build import build_plan, check_invented
 from learnfilter.app.exporting import export_bundle
 from learnfilter.app.judging import Judgement, judge_models, watch
 from learnfilter.app.models import LEARNED, Stored
@@ -36,7 +37,6 @@ from learnfilter.app.runs import RunFolder, open_run
 from learnfilter.app.studying import Subject, study_subject
 from learnfilter.app.training import train_models
 from learnfilter.app.verb_settings import DemoConfig, TrainConfig
-from learnfilter.app.verbs.train import check_families
 from learnfilter.drives.tables import iter_rows, write_drive
 from learnfilter.export.check import compare
 from learnfilter.plan import check_plan, write_plan
@@ -46,9 +46,11 @@ from learnfilter.runtime import load_bundle
 
 def run(settings: DemoConfig) -> dict[str, Any]:
     """Do the verb; returns the summary."""
-    check_families(settings)
+    check_invented(settings.site)
     site = settings.site
-    name = build_plan(site).name if site.file else "default"  # a bad plan is refused before hours are spent
+    if site.file:
+        build_plan(site)  # a bad plan is refused before hours are spent
+    name = Path(site.file).stem if site.file else "default"
     folder = open_run("demo", settings.name or name, settings)
     clock = time.monotonic()
     made_with = _training_part(settings)
@@ -115,6 +117,7 @@ def _page(
         if len(pairs) > 1
         else [(*pairs[0], n) for n in (0, 1)]
     )
+    at = replayed["locked_at_row"]
     handed = Table(
         "What goes to the robot",
         (Column("bundle"), Column("value", ",d")),
@@ -123,8 +126,8 @@ def _page(
             ("bytes of weights", bundle["weights_bytes"]),
             ("live cells", bundle["cells"]),
             ("poses", bundle["poses"]),
-            ("rows of the replayed drive", replayed["rows"]),
-            ("locked at row", replayed["locked_at_row"]),
+            ("strips of the replayed drive", replayed["rows"]),
+            ("strip at which it locked", None if at is None else at + 1),
         ),
         f"The NumPy runtime reproduces its vectors to a total variation of {bundle['runtime_tv']:.1e}.",
     )

@@ -32,7 +32,7 @@ def run(settings: ExportConfig) -> dict[str, Any]:
     model = chosen(source, settings.contender, build_lattices(made_with).layout)
     plan = build_plan(settings.site)
     figures = _figures(settings.ablation)
-    folder = open_run("export", settings.name or plan.name, settings, replace=True)
+    folder = open_run("export", settings.name or Path(settings.site.file or "").stem, settings, replace=True)
     out = Path(settings.out) if settings.out else folder.path / "bundle"
     sizes = export_bundle(made_with, model, plan, out, figures)
     sizes["runtime_tv"] = compare(out)

@@ -36,7 +36,7 @@ def run(settings: LabelConfig) -> dict[str, Any]:
     plan = build_plan(settings.site)
     drive = read_drive(Path(settings.drive), build_strip(made_with.strip), depth_kind=settings.depth_kind)
     folder = open_run("label", settings.name or Path(settings.drive).stem, settings, replace=True)
-    known = {row: np.array([x, y, np.radians(deg)]) for row, (x, y, deg) in settings.known.items()}
+    known = {row: np.array([x, y, np.radians(deg)]) for row, (x, y, deg) in (settings.known or {}).items()}
     site = lattices.render(plan, Path(settings.runs) / "cache")
     labels = smooth(
         drive, site, model.model, model.motion, after_m=lattices.after_m,
@@ -50,7 +50,9 @@ def run(settings: LabelConfig) -> dict[str, Any]:
     print(f"{facts['labelled_rows']} of {len(drive)} rows labelled")
     if drive.reference is not None:
         right = located(labels.reference, drive.reference)
-        facts["located_share"] = float(np.nanmean(right)) if np.isfinite(right).any() else None
-        print(f"within 0.5 m and 15 degrees of the table's own reference: {facts['located_share']}")
+        right = right[np.isfinite(right)]
+        facts["located_share"] = float(right.mean()) if len(right) else None
+        if len(right):
+            print(f"within 0.5 m and 15 degrees of the table's own reference in {right.mean():.0%} of those")
     print(f"written: {table}, {folder.path / 'labels.png'}")
     return folder.finish(facts)

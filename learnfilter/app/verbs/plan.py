@@ -12,7 +12,9 @@ Example:
 from __future__ import annotations
 
 from collections import Counter
+from collections.abc import Sequence
 from dataclasses import asdict
+from itertools import groupby
 from pathlib import Path
 from typing import Any
 
@@ -20,8 +22,11 @@ from learnfilter.app.build import build_plan
 from learnfilter.app.runs import open_run
 from learnfilter.app.verb_settings import PlanConfig
 from learnfilter.core.errors import ConfigError, PlanError
-from learnfilter.plan import check_plan, write_plan
+from learnfilter.plan import Finding, check_plan, write_plan
 from learnfilter.report import draw_plan
+
+# More of a kind hide the other kinds, in the terminal and on the picture.
+MOST_OF_A_KIND = 8
 
 
 def run(settings: PlanConfig) -> dict[str, Any]:
@@ -32,6 +37,7 @@ def run(settings: PlanConfig) -> dict[str, Any]:
     """
     plan = build_plan(settings.site)
     findings = check_plan(plan, robot_radius_m=settings.robot_radius_m)
+    shown = _shortened(findings)
     source = Path(settings.site.file or "")
     folder = open_run("plan", settings.name or source.stem, settings, replace=True)
     out = Path(settings.out) if settings.out else folder.path / "plan.geojson"
@@ -39,11 +45,14 @@ def run(settings: PlanConfig) -> dict[str, Any]:
         raise ConfigError("this would overwrite the plan that is read", place="out", got=out)
 
     write_plan(plan, out)
-    draw_plan(plan, folder.path / "plan.png", findings=findings)
+    draw_plan(plan, folder.path / "plan.png", findings=shown)
     left, bottom, right, top = plan.bounds
     print(f"{plan.name}: {len(plan.segments)} surfaces, {right - left:.1f} x {top - bottom:.1f} m")
-    for number, finding in enumerate(findings, 1):
-        print(f"{number:3d} {finding.severity}: {finding.message} {finding.advice}".rstrip())
+    advised = ""
+    for number, finding in enumerate(shown, 1):
+        advice = finding.advice if finding.advice != advised else ""
+        advised = finding.advice
+        print(f"{number:3d} {finding.severity}: {finding.message} {advice}".rstrip())
     print(f"written: {out}, {folder.path / 'plan.png'}")
     counts = Counter(finding.severity for finding in findings)
     summary = folder.finish(
@@ -61,3 +70,15 @@ def run(settings: PlanConfig) -> dict[str, Any]:
             f"the plan cannot be used before {counts['error']} of the above is mended", file=source
         )
     return summary
+
+
+def _shortened(findings: Sequence[Finding]) -> list[Finding]:
+    """The first few findings of each kind, and one that counts the others of it."""
+    shown: list[Finding] = []
+    for what, kind in groupby(findings, lambda finding: finding.what):
+        alike = list(kind)
+        shown += alike[:MOST_OF_A_KIND]
+        if len(alike) > MOST_OF_A_KIND:
+            message = f"{len(alike) - MOST_OF_A_KIND} more like the one above; summary.json has them all."
+            shown.append(Finding(alike[0].severity, what, message, None, alike[0].advice))
+    return shown

@@ -14,8 +14,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable
 from typing import Any
 
-from learnfilter.app.build import build_conditions, build_plan, build_strip
-from learnfilter.app.config import hold
+from learnfilter.app.build import build_conditions, build_plan, build_strip, check_invented
 from learnfilter.app.progress import progress
 from learnfilter.app.runs import open_run
 from learnfilter.app.verb_settings import RehearseConfig
@@ -23,8 +22,7 @@ from learnfilter.core.seeds import stream
 from learnfilter.drives.drive import Drive
 from learnfilter.drives.tables import write_drive
 from learnfilter.plan import FloorPlan, write_plan
-from learnfilter.sim import FAMILIES, build_world, rehearse, rehearse_site
-from learnfilter.sim.families import SIZES_M
+from learnfilter.sim import build_world, rehearse, rehearse_site
 
 # Makes the site of a number and, as they are asked for, the drives on it.
 Maker = Callable[[int], tuple[FloorPlan, Iterable[Drive]]]
@@ -57,11 +55,7 @@ def run(settings: RehearseConfig) -> dict[str, Any]:
 
 def _invent(settings: RehearseConfig) -> Maker:
     site = settings.site
-    known = bool(site.families) and set(site.families) <= FAMILIES.keys()
-    hold("site.families", known, f"some of {', '.join(FAMILIES)}", site.families)
-    low, high = SIZES_M
-    for key, size in (("site.width_m", site.width_m), ("site.depth_m", site.depth_m)):
-        hold(key, low <= size <= high, f"{low:g} to {high:g} metres", size)
+    check_invented(site)
     conditions, strip = build_conditions(settings.condition), build_strip(settings.strip)
 
     def make(index: int) -> tuple[FloorPlan, Iterable[Drive]]:

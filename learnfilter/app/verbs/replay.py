@@ -32,7 +32,7 @@ def run(settings: ReplayConfig) -> dict[str, Any]:
     draw(replayed, plan, folder.path / "replay.png", f"{drive.stem} through {bundle}")
     summary = replayed.summary()
     at = summary["locked_at_row"]
-    print(f"{summary['rows']} strips: " + ("never locked" if at is None else f"locked at row {at}"))
+    print(f"{summary['rows']} strips: " + ("never locked" if at is None else f"locked at strip {at + 1}"))
     if summary["located_share"] is not None:
         print(f"within 0.5 m and 15 degrees of the reference in {summary['located_share']:.0%} of rows")
     print(f"written: {folder.path} (estimates.parquet, replay.png)")

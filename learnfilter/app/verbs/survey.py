@@ -11,10 +11,11 @@ Example:
 from __future__ import annotations
 
 import math
+from pathlib import Path
 from typing import Any
 
 from learnfilter.app.build import build_plan, build_strip
-from learnfilter.app.pages import provenance, settings_text
+from learnfilter.app.pages import DEPTH_ONLY, provenance, settings_text
 from learnfilter.app.progress import progress
 from learnfilter.app.runs import open_run
 from learnfilter.app.verb_settings import SurveyConfig
@@ -23,6 +24,7 @@ from learnfilter.core.strip import lay_on_ring
 from learnfilter.render import grid_for, render_site
 from learnfilter.report import Column, Note, Placement, RunPage, SiteMap, Table, write_page
 from learnfilter.survey import Group, Marker, RingComparison, Survey, advise, contrasting, paint, survey_site
+from learnfilter.survey.lookalike import MOST_ALIKE
 
 
 def run(settings: SurveyConfig) -> dict[str, Any]:
@@ -33,7 +35,7 @@ def run(settings: SurveyConfig) -> dict[str, Any]:
         plan, layout, grid_for(plan, grid.headings, grid.cell_m), robot_radius_m=grid.robot_radius_m,
         max_range_m=strip.max_range_m, windows=grid.windows,
     )  # fmt: skip
-    folder = open_run("survey", settings.name or plan.name, settings, replace=True)
+    folder = open_run("survey", settings.name or Path(settings.site.file or "").stem, settings, replace=True)
     comparison = RingComparison()
     with progress("survey") as tick:
         found = survey_site(
@@ -57,6 +59,7 @@ def run(settings: SurveyConfig) -> dict[str, Any]:
     headline = _headline(found)
     notes = [*map(_group_note, found.groups), *(_marker_note(marker, name) for marker in markers)]
     lattice = site.grid
+    floor_m2 = site.n_cells * lattice.cell_m**2
     write_page(
         RunPage(
             title=plan.name,
@@ -69,9 +72,11 @@ def run(settings: SurveyConfig) -> dict[str, Any]:
                     f"Where {plan.name} is ambiguous", plan, tuple(notes), found.ambiguity,
                     Placement(lattice.left_m, lattice.bottom_m, lattice.cell_m),
                     "mass left elsewhere after one strip",
+                    f"{len(found.looks.cell)} poses sampled on the {floor_m2:.0f} m2 that the robot gets to.",
                 ),
             ),
             tables=(_table(found, after, name),),
+            cautions=() if plan.has_finishes else (DEPTH_ONLY,),
             provenance=provenance(settings, {"site": site.key}),
             settings=settings_text(settings),
         ),
@@ -97,19 +102,22 @@ def _headline(found: Survey) -> str:
     if not found.groups:
         return "No two places on this site look alike to the sensor: one strip is enough almost anywhere."
     stuck = sum(group.for_ever for group in found.groups)
-    tail = f"; {stuck} of {len(found.groups)} groups cannot be told apart by any move" if stuck else ""
-    return f"{found.alike_share:.0%} of poses look like some place far away{tail}."
+    tail = ""
+    if stuck == len(found.groups):
+        tail = ", and no move tells them apart"
+    elif stuck:
+        tail = f"; in {stuck} of {len(found.groups)} groups no move tells them apart"
+    return f"{found.alike_share:.0%} of poses look like another place{tail}."
 
 
 def _group_note(group: Group) -> Note:
     x, y, _ = group.pair[0]
-    where = f"{group.fold} places look alike over {group.area_m2:.0f} m2"
+    count = group.fold if group.fold <= MOST_ALIKE else f"More than {MOST_ALIKE}"
+    where = f"{count} places look alike over {group.area_m2:.0f} m2"
     if group.for_ever:
-        return Note(
-            f"{where}, and no move tells them apart.", (x, y), "error", "Only a mark on a wall helps."
-        )
+        return Note(f"{where}; no move tells them apart.", (x, y), "warning", "Only a mark on a wall helps.")
     move = "a turn on the spot" if group.move_m == 0 else f"a move of {group.move_m:.1f} m"
-    return Note(f"{where} until {move}.", (x, y), "warning")
+    return Note(f"{where}; {move} tells them apart.", (x, y))
 
 
 def _marker_note(marker: Marker, paint_name: str) -> Note:

@@ -15,30 +15,18 @@ from __future__ import annotations
 from pathlib import Path
 from typing import Any
 
-from learnfilter.app.config import hold
+from learnfilter.app.build import check_invented
 from learnfilter.app.models import LEARNED
 from learnfilter.app.pages import provenance, settings_text, training_charts
 from learnfilter.app.runs import open_run
 from learnfilter.app.training import train_models
 from learnfilter.app.verb_settings import TrainConfig
 from learnfilter.report import Column, RunPage, Table, write_page
-from learnfilter.sim import FAMILIES
-
-
-def check_families(settings: TrainConfig) -> None:
-    """Refuse families nobody makes.
-
-    Raises:
-        ConfigError: none, or unknown ones.
-    """
-    families = settings.site.families
-    known = bool(families) and set(families) <= FAMILIES.keys()
-    hold("site.families", known, f"some of {', '.join(FAMILIES)}", families)
 
 
 def run(settings: TrainConfig) -> dict[str, Any]:
     """Do the verb; returns the summary."""
-    check_families(settings)
+    check_invented(settings.site)
     folder = open_run("train", settings.name or "default", settings)
     models = train_models(settings, folder.path)
     validation = {name: model.facts["validation"] for name, model in models.items()}
