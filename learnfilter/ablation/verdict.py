@@ -121,7 +121,7 @@ def decide(
     confidence = _confidence(at)
     if at.located.low > 0 and at.nll.low > 0 and not worse:
         return Verdict("learned", f"Ship the learned model: {learned} beats {analytic}.", confidence)
-    if at.located.high <= 0 or (at.nll.high < 0 and at.located.value <= 0):
+    if at.located.high < 0 or (at.nll.high < 0 and at.located.value <= 0):
         return Verdict(
             "analytic", f"Ship the analytic model: {learned} does not beat {analytic}.", confidence
         )
@@ -135,9 +135,7 @@ def decide(
 def _confidence(at: Difference) -> str:
     points, nats = 100 * at.located.value, at.nll.value
     if at.located.n < 2:
-        return (
-            f"{points:+.1f} points located after {at.mark} strips, {nats:+.2f} nats saved; one drive alone."
-        )
+        return f"{points:+.1f} points located after {at.mark} strips, {nats:+.2f} nats saved, on one drive."
     return (
         f"{points:+.1f} points located after {at.mark} strips "
         f"({100 * at.located.low:+.1f} to {100 * at.located.high:+.1f}), "

@@ -107,8 +107,7 @@ def judge_models(
     contenders = contenders_of(models, hide_colour)
     with progress("ablation") as tick:
         rows = run_study(contenders, grounds, condition, folder / "rows.jsonl", tick)
-    with whole_file(folder / "rows.parquet") as beside:
-        pq.write_table(pa.Table.from_pylist(rows), beside)
+    write_rows(rows, folder / "rows.parquet")
     analytic = choose_analytic({name: m.facts["validation"] for name, m in models.items() if not m.learned})
     found = differences(rows, LEARNED, analytic, stream(seed, "differences"))
     names = [contender.name for contender in contenders]
@@ -120,6 +119,13 @@ def judge_models(
         decide(rows, LEARNED, analytic, found, mark),
         {n: float(np.median([r["milliseconds"] for r in rows if r["contender"] == n])) for n in names},
     )
+
+
+def write_rows(rows: Sequence[Row], path: Path) -> None:
+    """Rows of a study as Parquet, a column for every key that any row has."""
+    names = dict.fromkeys(key for row in rows for key in row)
+    with whole_file(path) as beside:
+        pq.write_table(pa.table({name: [row.get(name) for row in rows] for name in names}), beside)
 
 
 def watch(

@@ -122,7 +122,9 @@ def write_csv(path: Path, columns: Columns, members: dict[str, Any]) -> None:
         writer.writerow(header)
         for start in range(0, len(columns["time_s"]), 1024):
             rows = slice(start, start + 1024)
-            cells = zip(*(array[rows].reshape(len(array[rows]), -1) for array in columns.values()), strict=True)
+            cells = zip(
+                *(array[rows].reshape(len(array[rows]), -1) for array in columns.values()), strict=True
+            )
             writer.writerows([_number(value) for array in row for value in array] for row in cells)
 
 

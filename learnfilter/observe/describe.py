@@ -81,7 +81,7 @@ def _describe_matcher(model: Matcher) -> tuple[Facts, Tensors]:
 
 
 def _rebuild_matcher(layout: RingLayout, facts: Facts, tensors: Tensors) -> Matcher:
-    scale, (range_rank, colour_rank, _) = RangeScale(**facts["scale"]), facts["ranks"]
+    scale, range_rank = RangeScale(**facts["scale"]), facts["ranks"][0]
     blank = Birth(
         scale,
         RangeFactors(
@@ -90,7 +90,9 @@ def _rebuild_matcher(layout: RingLayout, facts: Facts, tensors: Tensors) -> Matc
             np.zeros(scale.nodes + 2),
         ),
         ColourFactors(
-            np.zeros((colour_rank, 3)), np.zeros((colour_rank,) * 2), np.zeros(tensors["background"].shape)
+            np.zeros(tensors["landmarks"].shape),
+            np.zeros(tensors["root"].shape),
+            np.zeros(tensors["background"].shape),
         ),
         *(0.0, 1.0, 0.0, 0.0, 1.0, 1.0),
     )

@@ -121,7 +121,7 @@ class Matcher(ObservationModel):
     @property
     def ranks(self) -> tuple[int, int, int]:
         """Number of range, colour and extra channels."""
-        return self.measured.shape[1], self.landmarks.shape[0], self.shape.extra_rank * self.shape.residual
+        return self.measured.shape[1], self.root.shape[1], self.shape.extra_rank * self.shape.residual
 
     @property
     def channels(self) -> int:

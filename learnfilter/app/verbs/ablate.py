@@ -11,6 +11,7 @@ Example:
 
 from __future__ import annotations
 
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -36,7 +37,9 @@ from learnfilter.report import RunPage, write_page
 
 def run(settings: AblateConfig) -> dict[str, Any]:
     """Do the verb; returns the summary."""
-    made_with = settings_of(Path(settings.model))
+    made_with = replace(
+        settings_of(Path(settings.model)), runs=settings.runs
+    )  # the cache is ours, not the trainer's
     models = stored(Path(settings.model) / "models", build_lattices(made_with).layout)
     study = settings.study
     subject = study_subject(

@@ -12,6 +12,7 @@ Example:
 from __future__ import annotations
 
 import json
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -28,7 +29,7 @@ from learnfilter.export.check import compare
 def run(settings: ExportConfig) -> dict[str, Any]:
     """Do the verb; returns the summary."""
     source = Path(settings.model)
-    made_with = settings_of(source)
+    made_with = replace(settings_of(source), runs=settings.runs)  # the cache is ours, not the trainer's
     model = chosen(source, settings.contender, build_lattices(made_with).layout)
     plan = build_plan(settings.site)
     figures = _figures(settings.ablation)
