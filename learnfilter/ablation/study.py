@@ -13,6 +13,7 @@ from typing import Any, NamedTuple
 import torch
 
 from learnfilter.core.errors import InputError
+from learnfilter.core.memory import give_back_memory
 from learnfilter.drives.metrics import first_lock, located, travelled
 from learnfilter.filtering.course import Ground
 from learnfilter.filtering.motion import MotionModel
@@ -65,6 +66,7 @@ def run_study(
     file.parent.mkdir(parents=True, exist_ok=True)
     with file.open("a", encoding="utf-8") as out:
         for ground in grounds:
+            give_back_memory()
             for contender in contenders:
                 for row in _rows_on(contender, ground, condition, done):
                     out.write(json.dumps(row, sort_keys=True) + "\n")

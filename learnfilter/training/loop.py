@@ -12,7 +12,10 @@ import torch
 from numpy.typing import NDArray
 from torch import Tensor, nn
 
+from learnfilter.core.memory import give_back_memory
 from learnfilter.training.checkpoint import load_tensors, pack, save_tensors, unpack
+
+GIVE_BACK_EVERY = 8  # iterations: oftener costs time in page faults, more seldom lets the heap grow
 
 
 @dataclass(frozen=True)
@@ -151,6 +154,8 @@ def run_stage(
             _record(log, settings, iteration, total / since, result)
             keep(done)
             total, since = 0.0, 0
+        if done % GIVE_BACK_EVERY == 0:
+            give_back_memory()
         tick(done, settings.iterations, f"{settings.name}: validation {best:.3f} at {best_at}")
     unpack(load_tensors(best_path)[0], modules, None)
     return StageResult(history[-1][0] if history else 0, best_at, best, history)

@@ -113,11 +113,12 @@ def _headline(found: Survey) -> str:
 def _group_note(group: Group) -> Note:
     x, y, _ = group.pair[0]
     count = group.fold if group.fold <= MOST_ALIKE else f"More than {MOST_ALIKE}"
-    where = f"{count} places look alike over {group.area_m2:.0f} m2"
+    where = f"{count} places look alike after one strip, over {group.area_m2:.0f} m2"
     if group.for_ever:
-        return Note(f"{where}; no move tells them apart.", (x, y), "warning", "Only a mark on a wall helps.")
+        twins = f"{where}; at least two of them stay alike whatever the move."
+        return Note(twins, (x, y), "warning", "Only a mark on a wall helps.")
     move = "a turn on the spot" if group.move_m == 0 else f"a move of {group.move_m:.1f} m"
-    return Note(f"{where}; {move} tells them apart.", (x, y))
+    return Note(f"{where}; {move} tells the hardest two apart.", (x, y))
 
 
 def _marker_note(marker: Marker, paint_name: str) -> Note:
