@@ -53,8 +53,8 @@ class ColourFactors(NamedTuple):
     """kernel(x, y) ~ feature(x) . feature(y), feature(x) = kernel(x, landmarks) @ root.
 
     Attributes:
-        landmarks: [l 3] log colours.
-        root: [l k] from kernels at the landmarks to features.
+        landmarks: [k 3] log colours.
+        root: [k k] inverse square root of the landmarks' own kernel.
         background: [s k] features of the background sample, for normalisers.
     """
 
@@ -63,45 +63,28 @@ class ColourFactors(NamedTuple):
     background: NDArray[np.float64]
 
 
-LANDMARKS = 48  # more than features: they cost a column some kernels, while features cost the whole table
-FINISH_WEIGHT = 4.0  # a finish stands for whole walls, a background row for one column
-
-
 def factor_colour(fit: ColourFit, finishes: NDArray[np.float64], rank: int) -> ColourFactors:
-    """Factor the kernel to `rank` features, most accurate where finishes and background lie.
-
-    The kernel is written on many landmarks first, then on the principal axes of what finishes and
-    background look like there.
+    """Choose landmarks among finishes and background (greedy, largest residual first) and factor.
 
     Args:
         fit: the fitted colour model.
         finishes: [f 3] log colours of finishes seen while fitting: where accuracy matters most.
-        rank: number of features.
+        rank: number of landmarks.
     """
     candidates = np.vstack([finishes, fit.background])
-    weight = np.ones(len(candidates))
-    weight[: len(finishes)] = FINISH_WEIGHT * len(fit.background) / max(len(finishes), 1)
-    landmarks = candidates[_spread_out(kernel(candidates, candidates, fit.spread), weight, LANDMARKS)]
-    values, vectors = np.linalg.eigh(kernel(landmarks, landmarks, fit.spread))
-    keep = values > 1e-8 * values[-1]
-    whiten = vectors[:, keep] / np.sqrt(values[keep])
-    features = kernel(candidates, landmarks, fit.spread) @ whiten
-    _, axes = np.linalg.eigh(features.T @ (features * weight[:, None]))
-    root = whiten @ axes[:, ::-1][:, :rank]
-    background = kernel(fit.background[:256], landmarks, fit.spread) @ root
-    return ColourFactors(landmarks, root, background)
-
-
-def _spread_out(full: NDArray[np.float64], weight: NDArray[np.float64], count: int) -> list[int]:
-    """Rows of a kernel [n n] picked one by one, each the one explained worst so far (pivoted Cholesky)."""
-    residual, rows, chosen = np.diag(full).copy(), np.zeros((0, len(full))), []
-    for _ in range(min(count, len(full))):
-        pick = int(np.argmax(residual * weight))
-        if residual[pick] < 1e-6:  # the rest is explained already
-            break
-        row = (full[pick] - rows[:, pick] @ rows) / np.sqrt(residual[pick])
-        rows = np.vstack([rows, row])
-        residual = np.maximum(residual - row**2, 0.0)
+    full = kernel(candidates, candidates, fit.spread)
+    residual, chosen = np.diag(full).copy(), []
+    residual[: len(finishes)] *= 4  # finishes stand for whole walls, background rows for one column
+    rows = np.zeros((0, len(candidates)))
+    for _ in range(min(rank, len(candidates))):
+        pick = int(np.argmax(residual))
+        row = full[pick] - rows[:, pick] @ rows
+        rows = np.vstack([rows, row / np.sqrt(max(row[pick], 1e-9))])
+        residual = np.maximum(residual - rows[-1] ** 2, 0.0)
         residual[pick] = 0.0
         chosen.append(pick)
-    return chosen
+    landmarks = candidates[chosen]
+    values, vectors = np.linalg.eigh(kernel(landmarks, landmarks, fit.spread))
+    root = vectors / np.sqrt(np.maximum(values, 1e-4)) @ vectors.T
+    background = kernel(fit.background[:256], landmarks, fit.spread) @ root
+    return ColourFactors(landmarks, root, background)

@@ -98,7 +98,7 @@ class BirthSettings:
     first_m: float = 0.05
     growth: float = 0.02
     range_rank: int = 20
-    colour_rank: int = 12
+    colour_rank: int = 10
 
 
 def birth_of(tuned: Blend, fits: Fits, settings: BirthSettings) -> Birth:
