@@ -135,15 +135,7 @@ def run_stage(
     for iteration in range(first, settings.iterations):
         if _stale(history, best_at, settings):
             break
-        for group in optimiser.param_groups:
-            group["lr"] = settings.rate(iteration)
-        optimiser.zero_grad(set_to_none=True)
-        loss = loss_at(iteration)
-        if loss.requires_grad:
-            loss.backward()
-        nn.utils.clip_grad_norm_(parameters, settings.clip)
-        optimiser.step()
-        total, since = total + float(loss.detach()), since + 1
+        total, since = total + _step(optimiser, parameters, loss_at, iteration, settings), since + 1
         done = iteration + 1
         if done % settings.validate_every == 0 or done == settings.iterations:
             result = validate()
@@ -159,6 +151,25 @@ def run_stage(
         tick(done, settings.iterations, f"{settings.name}: validation {best:.3f} at {best_at}")
     unpack(load_tensors(best_path)[0], modules, None)
     return StageResult(history[-1][0] if history else 0, best_at, best, history)
+
+
+def _step(
+    optimiser: torch.optim.Optimizer,
+    parameters: list[nn.Parameter],
+    loss_at: Callable[[int], Tensor],
+    iteration: int,
+    settings: StageSettings,
+) -> float:
+    """One step of the optimiser; returns the loss before it."""
+    for group in optimiser.param_groups:
+        group["lr"] = settings.rate(iteration)
+    optimiser.zero_grad(set_to_none=True)
+    loss = loss_at(iteration)
+    if loss.requires_grad:
+        loss.backward()
+    nn.utils.clip_grad_norm_(parameters, settings.clip)
+    optimiser.step()
+    return float(loss.detach())
 
 
 def _stale(history: list, best_at: int, settings: StageSettings) -> bool:

@@ -21,7 +21,7 @@ from learnfilter.app.runs import open_run
 from learnfilter.app.verb_settings import SurveyConfig
 from learnfilter.core.seeds import stream
 from learnfilter.core.strip import lay_on_ring
-from learnfilter.render import grid_for, render_site
+from learnfilter.render import Site, grid_for, render_site
 from learnfilter.report import Column, Note, Placement, RunPage, SiteMap, Table, write_page
 from learnfilter.survey import Group, Marker, RingComparison, Survey, advise, contrasting, paint, survey_site
 from learnfilter.survey.lookalike import MOST_ALIKE
@@ -36,26 +36,11 @@ def run(settings: SurveyConfig) -> dict[str, Any]:
         max_range_m=strip.max_range_m, windows=grid.windows,
     )  # fmt: skip
     folder = open_run("survey", settings.name or Path(settings.site.file or "").stem, settings, replace=True)
-    comparison = RingComparison()
-    with progress("survey") as tick:
-        found = survey_site(
-            site, comparison.of(site), budget=settings.budget, margin_nats=settings.margin_nats,
-            rng=stream(settings.seed, "survey"), tick=tick,
-        )  # fmt: skip
-    markers = (
-        advise(found, site, plan, settings.markers, comparison.nats_a_column(site))
-        if strip.has_colour
-        else ()
-    )
+    found = _survey(site, settings, "survey")
+    nats = RingComparison().nats_a_column(site)
+    markers = advise(found, site, plan, settings.markers, nats) if strip.has_colour else ()
     name, srgb = contrasting(site)
-    after = None
-    if markers:
-        painted = paint(site, markers, srgb)
-        with progress("survey, painted") as tick:
-            after = survey_site(
-                painted, comparison.of(painted), budget=settings.budget, margin_nats=settings.margin_nats,
-                rng=stream(settings.seed, "survey"), tick=tick,
-            )  # fmt: skip
+    after = _survey(paint(site, markers, srgb), settings, "survey, painted") if markers else None
     headline = _headline(found)
     notes = [*map(_group_note, found.groups), *(_marker_note(marker, name) for marker in markers)]
     lattice = site.grid
@@ -96,6 +81,15 @@ def run(settings: SurveyConfig) -> dict[str, Any]:
             "located_share_painted": after.located_share if after else None,
         }
     )
+
+
+def _survey(site: Site, settings: SurveyConfig, label: str) -> Survey:
+    """Survey one site by the built-in comparison; the same poses are sampled before and after painting."""
+    with progress(label) as tick:
+        return survey_site(
+            site, RingComparison().of(site), budget=settings.budget, margin_nats=settings.margin_nats,
+            rng=stream(settings.seed, "survey"), tick=tick,
+        )  # fmt: skip
 
 
 def _headline(found: Survey) -> str:
