@@ -39,7 +39,7 @@ PROVENANCE = Provenance("plan", "config", [0], {})
 @cache
 def rehearsed(family: str = "offices", rows: int = 130) -> tuple[Site, Drive]:
     """An invented site of 8 x 8 m and a drive on it."""
-    plan, drives = rehearse_site(5, family, Conditions(), STRIP, rows, 1, 8.0, 8.0, without_finishes=0.0)
+    plan, drives, _ = rehearse_site(5, family, Conditions(), STRIP, rows, 1, 8.0, 8.0, without_finishes=0.0)
     grid = grid_for(plan, HEADINGS, 0.25)
     return render_site(plan, LAYOUT, grid, robot_radius_m=0.25, max_range_m=REACH_M), drives[0]
 

@@ -257,27 +257,11 @@ def debiased_calibration_error(confidence: ArrayLike, correct: ArrayLike, n_bins
     return math.sqrt(max(0.0, squares / len(confidence)))
 
 
-def credible_rank(belief: ArrayLike, truth: tuple[int, ...], rng: np.random.Generator) -> float:
-    """Mass of the smallest highest-density set that reaches the true pose.
-
-    Uniform on [0, 1] over many drives if the belief is calibrated; ties (and the true pose's own
-    mass) are split at random so that this holds for a discrete belief too.
-
-    Args:
-        belief: any shape, probabilities that sum to one.
-        truth: index of the true pose in it.
-        rng: source of the split.
-    """
-    belief = np.asarray(belief, dtype=float)
-    above = belief[belief > belief[truth]].sum()
-    return float(above + rng.random() * belief[belief == belief[truth]].sum())
-
-
 def coverage(ranks: ArrayLike, level: float = 0.9) -> Interval:
     """Share of credible sets of mass `level` that hold the truth; near `level` if calibrated.
 
     Args:
-        ranks: [n] from `credible_rank`, one a drive: ranks of one drive are not independent.
+        ranks: [n] from `core.estimate.credible_rank`, one a drive: ranks of one drive are not independent.
         level: mass of the sets.
     """
     ranks = np.asarray(ranks, dtype=float)

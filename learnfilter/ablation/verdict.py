@@ -8,12 +8,21 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from learnfilter.ablation.statistics import Interval, bootstrap, paired_bootstrap, site_means, sites_needed
-from learnfilter.ablation.study import MARKS, Row
+from learnfilter.ablation.statistics import (
+    Interval,
+    bootstrap,
+    holm,
+    mcnemar_exact,
+    paired_bootstrap,
+    site_means,
+    sites_needed,
+)
+from learnfilter.ablation.study import Row
 from learnfilter.core.errors import ConfigError
 
 # More sites than this are no advice but a way of saying that there is no difference.
 MOST_SITES = 500
+ALL = "all conditions"
 
 
 class Score(NamedTuple):
@@ -26,37 +35,57 @@ class Score(NamedTuple):
 
 
 class Difference(NamedTuple):
-    """Learned minus analytic after one number of strips, paired by drive.
+    """Learned minus analytic under one condition after one number of strips, paired by drive.
 
     Attributes:
+        condition: its name, or ALL for the mean over all of them.
         located: share gained; above zero favours the learned model.
         nll: nats saved; above zero favours the learned model.
+        p: exact McNemar test of the located shares, adjusted (Holm) for all conditions at this mark.
     """
 
+    condition: str
     mark: int
     located: Interval
     nll: Interval
+    p: float
 
 
-def column(rows: Sequence[Row], contender: str, key: str, order: Sequence[str]) -> NDArray[np.float64]:
+Drive = tuple[str, str]  # condition, drive
+
+
+def column(rows: Sequence[Row], contender: str, key: str, order: Sequence[Drive]) -> NDArray[np.float64]:
     """Values of one contender in the order of drives; NaN where a drive was too short."""
-    by_drive = {row["drive"]: row.get(key) for row in rows if row["contender"] == contender}
+    by_drive = {
+        (row["condition"], row["drive"]): row.get(key) for row in rows if row["contender"] == contender
+    }
     values = [by_drive.get(drive) for drive in order]
     return np.array([np.nan if v is None else float(v) for v in values])
 
 
-def drives_of(rows: Sequence[Row]) -> tuple[list[str], NDArray]:
-    """All drives in a fixed order, and the site of each."""
-    site_of = {row["drive"]: row["site"] for row in rows}
+def drives_of(rows: Sequence[Row]) -> tuple[list[Drive], NDArray]:
+    """All drives in a fixed order, and the unit of evidence of each: its site, whatever the condition."""
+    site_of = {(row["condition"], row["drive"]): row["site"] for row in rows}
     order = sorted(site_of)
     sites = np.array([site_of[drive] for drive in order])
     # on a single site the drives are what is independent
-    return order, np.array(order) if len(set(sites)) == 1 else sites
+    return order, np.array([drive for _, drive in order]) if len(set(sites)) == 1 else sites
+
+
+def conditions_of(rows: Sequence[Row]) -> list[str]:
+    """Conditions in the order they were studied."""
+    return list(dict.fromkeys(row["condition"] for row in rows))
+
+
+def under(rows: Sequence[Row], condition: str) -> list[Row]:
+    """Rows of one condition, or of all."""
+    return [row for row in rows if condition in (ALL, row["condition"])]
 
 
 def marks_of(rows: Sequence[Row]) -> list[int]:
     """Numbers of strips that at least one drive reached."""
-    return [mark for mark in MARKS if any(f"nll_{mark}" in row for row in rows)]
+    reached = {int(key.removeprefix("nll_")) for row in rows for key in row if key.startswith("nll_")}
+    return sorted(reached)
 
 
 def scores(rows: Sequence[Row], contenders: Sequence[str], rng: np.random.Generator) -> list[Score]:
@@ -77,20 +106,37 @@ def scores(rows: Sequence[Row], contenders: Sequence[str], rng: np.random.Genera
 def differences(
     rows: Sequence[Row], learned: str, analytic: str, rng: np.random.Generator
 ) -> list[Difference]:
-    """Paired differences after each number of strips."""
-    order, sites = drives_of(rows)
+    """Paired differences under every condition after every number of strips, and over all of them."""
+    conditions, found = conditions_of(rows), []
+    named = conditions if len(conditions) == 1 else [ALL, *conditions]
+    for mark in marks_of(rows):
+        tests = holm([_mcnemar(under(rows, name), learned, analytic, mark) for name in conditions])
+        p_of = dict(zip(conditions, tests, strict=True))
+        for name in named:
+            own = under(rows, name)
+            order, sites = drives_of(own)
 
-    def compare(first: str, second: str, key: str) -> Interval:
-        return paired_bootstrap(
-            column(rows, first, key, order), column(rows, second, key, order), sites, rng=rng
-        )
+            def compare(first: str, second: str, key: str, own=own, order=order, sites=sites) -> Interval:
+                return paired_bootstrap(
+                    column(own, first, key, order), column(own, second, key, order), sites, rng=rng
+                )
 
-    return [
-        Difference(
-            mark, compare(learned, analytic, f"located_{mark}"), compare(analytic, learned, f"nll_{mark}")
-        )
-        for mark in marks_of(rows)
-    ]
+            found.append(
+                Difference(
+                    name,
+                    mark,
+                    compare(learned, analytic, f"located_{mark}"),
+                    compare(analytic, learned, f"nll_{mark}"),
+                    float(p_of.get(name, _mcnemar(own, learned, analytic, mark))),
+                )
+            )
+    return found
+
+
+def _mcnemar(rows: Sequence[Row], learned: str, analytic: str, mark: int) -> float:
+    order, _ = drives_of(rows)
+    ours, theirs = (column(rows, name, f"located_{mark}", order) for name in (learned, analytic))
+    return mcnemar_exact(int(np.sum(ours > theirs)), int(np.sum(ours < theirs)))
 
 
 class Verdict(NamedTuple):
@@ -106,24 +152,30 @@ def decide(
 ) -> Verdict:
     """Decide by the located share after `mark` strips; nats speak where shares are level.
 
-    The learned model is shipped if it locates more and saves nats, both beyond doubt (95 %
-    intervals above zero), and is not clearly worse at any other number of strips.
+    The learned model is shipped if over all conditions it locates more and saves nats, both beyond doubt
+    (95 % intervals above zero), and is beyond doubt worse under no condition (Holm over conditions).
 
     Raises:
         ConfigError: no drive has `mark` weighed strips.
     """
-    by_mark = {difference.mark: difference for difference in found}
-    if mark not in by_mark:
-        expected = f"at most {max(by_mark)}, or longer drives"
+    if mark not in {d.mark for d in found}:
+        expected = f"at most {max(d.mark for d in found)}, or longer drives"
         raise ConfigError("no drive is so long", place="study.mark", expected=expected, got=mark)
-    at = by_mark[mark]
-    worse = [d.mark for d in found if d.located.high < 0]
-    confidence = _confidence(at)
+    at = next(d for d in found if d.mark == mark)  # the first is over all conditions
+    worse = sorted({d.condition for d in found if d.located.high < 0 and d.p < 0.05})
+    confidence = _confidence(at, len(conditions_of(rows)))
     if at.located.low > 0 and at.nll.low > 0 and not worse:
         return Verdict("learned", f"Ship the learned model: {learned} beats {analytic}.", confidence)
     if at.located.high < 0 or (at.nll.high < 0 and at.located.value <= 0):
         return Verdict(
             "analytic", f"Ship the analytic model: {learned} does not beat {analytic}.", confidence
+        )
+    if at.located.low > 0 and at.nll.low > 0:
+        return Verdict(
+            "cannot tell",
+            f"Cannot tell {learned} from {analytic}: it gains on the whole but loses under "
+            f"{', '.join(worse)}. Ship the analytic one where that can happen.",
+            confidence,
         )
     return Verdict(
         "cannot tell",
@@ -132,15 +184,16 @@ def decide(
     )
 
 
-def _confidence(at: Difference) -> str:
+def _confidence(at: Difference, conditions: int) -> str:
     points, nats = 100 * at.located.value, at.nll.value
     if at.located.n < 2:
         return f"{points:+.1f} points located after {at.mark} strips, {nats:+.2f} nats saved, on one drive."
+    over = f"mean over {conditions} conditions, " if conditions > 1 else ""
     return (
         f"{points:+.1f} points located after {at.mark} strips "
         f"({100 * at.located.low:+.1f} to {100 * at.located.high:+.1f}), "
         f"{nats:+.2f} nats saved ({at.nll.low:+.2f} to {at.nll.high:+.2f}); "
-        f"95 % intervals, paired by drive, bootstrap over {at.located.n} units."
+        f"95 % intervals, {over}paired by drive, bootstrap over {at.located.n} units."
     )
 
 

@@ -14,9 +14,10 @@ from typing import Any, NoReturn
 
 import hydra
 from hydra import compose, initialize_config_dir
+from hydra.core.global_hydra import GlobalHydra
 from hydra.core.hydra_config import HydraConfig
 from hydra.errors import HydraException, OverrideParseException
-from omegaconf import DictConfig, OmegaConf
+from omegaconf import DictConfig, ListConfig, OmegaConf
 from omegaconf.errors import OmegaConfBaseException
 
 from learnfilter import __version__
@@ -35,6 +36,9 @@ _QUIET = (
     "hydra.sweep.subdir=.",
     "hydra.job.config.override_dirname.exclude_keys=[name,runs,threads]",
 )
+
+
+BASE = "as-trained"  # the condition that all others change
 
 
 def run_command(words: list[str]) -> int:
@@ -121,7 +125,27 @@ def _search_path(folder: str) -> str:
 def compose_settings(verb: str, overrides: list[str]) -> DictConfig:
     """The settings of `learnfilter VERB OVERRIDES`, not yet checked."""
     with initialize_config_dir(version_base="1.3", config_dir=str(data_dir("configs"))):
-        return compose(verb, overrides)
+        return with_conditions(compose(verb, overrides), [o for o in overrides if o.startswith("hydra.")])
+
+
+def with_conditions(composed: DictConfig, overrides: list[str]) -> DictConfig:
+    """Put what the files of configs/condition say in the place of the names under `conditions`.
+
+    Args:
+        composed: settings of a verb; those without `conditions` are left alone.
+        overrides: where else files may lie.
+    """
+    names = composed.get("conditions")
+    if not isinstance(names, ListConfig):
+        return composed
+    if list(names) == ["all"]:
+        names = GlobalHydra.instance().config_loader().get_group_options("condition")
+    parts = {str(name): [part for part in str(name).split("+") if part != BASE] for name in names}
+    composed.conditions = {
+        name: compose("conditions", [*overrides, f"condition=[{','.join(own)}]"]).condition
+        for name, own in parts.items()
+    }
+    return composed
 
 
 def _sweep(verb: str, overrides: list[str]) -> None:
@@ -136,6 +160,8 @@ def _sweep_job(composed: DictConfig) -> dict[str, Any]:
     print(
         f"learnfilter {job.config_name}: job {job.num}: {job.override_dirname}", file=sys.stderr, flush=True
     )
+    here = [f"hydra.searchpath={list(HydraConfig.get().searchpath)}"]
+    composed = with_conditions(composed, here)
     return run_verb(job.config_name, composed, re.sub(r"[^\w.,=+-]+", "-", job.override_dirname))
 
 

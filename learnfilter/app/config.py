@@ -88,6 +88,7 @@ class GridConfig:
     cell_m: float
     headings: int
     bearings_per_heading: int
+    column_step: int
     robot_radius_m: float
     windows: str
 
@@ -100,6 +101,7 @@ class GridConfig:
             "at least 1",
             self.bearings_per_heading,
         )
+        hold("grid.column_step", self.column_step >= 1, "at least 1", self.column_step)
         hold("grid.robot_radius_m", self.robot_radius_m >= 0, "not below 0", self.robot_radius_m)
         hold(
             "grid.windows",

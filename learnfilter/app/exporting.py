@@ -7,7 +7,7 @@ from pathlib import Path
 from typing import Any
 
 from learnfilter.app.build import build_strip
-from learnfilter.app.grounds import build_lattices, drives_on
+from learnfilter.app.grounds import drives_on
 from learnfilter.app.models import Stored
 from learnfilter.app.verb_settings import TrainConfig
 from learnfilter.core.strip import Strip
@@ -23,7 +23,7 @@ VECTOR_ROWS = 90
 
 def filter_for(made_with: TrainConfig, model: Stored, plan: FloorPlan) -> Filter:
     """A model on a plan, with the sensor and lattice it was trained for."""
-    lattices = build_lattices(made_with)
+    lattices = model.lattices
     weighing = Weighing(lattices.after_m, lattices.after_rad, model.facts["floor"])
     site = lattices.render(plan, Path(made_with.runs) / "cache")
     return Filter(model.model, model.motion, site, build_strip(made_with.strip), weighing)
@@ -31,7 +31,7 @@ def filter_for(made_with: TrainConfig, model: Stored, plan: FloorPlan) -> Filter
 
 def vector_drive(plan: FloorPlan, strip: Strip, radius_m: float, seed: int, rows: int = VECTOR_ROWS) -> Drive:
     """A simulated drive for the bundle's test vectors."""
-    return drives_on(plan, strip, Conditions(), 1, rows, seed, radius_m, lambda *_: None)[0]
+    return drives_on(plan, strip, Conditions(), 1, rows, seed, radius_m).drives[0]
 
 
 def export_bundle(

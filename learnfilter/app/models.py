@@ -7,11 +7,11 @@ from typing import Any, NamedTuple
 
 from omegaconf import OmegaConf
 
-from learnfilter.ablation.study import Contender
+from learnfilter.ablation.study import Filter
 from learnfilter.app.config import typed
+from learnfilter.app.lattices import Lattices, build_lattices
 from learnfilter.app.verb_settings import TrainConfig
 from learnfilter.core.errors import ConfigError
-from learnfilter.core.strip import RingLayout
 from learnfilter.filtering.motion import MotionModel
 from learnfilter.observe.contract import ObservationModel
 from learnfilter.observe.describe import describe, rebuild
@@ -27,25 +27,27 @@ class Stored(NamedTuple):
     Attributes:
         name: 'matcher' or the kind of analytic blend.
         model, motion: the filter.
-        facts: validation score, stages, floor, seed.
+        lattices: the lattice it was tuned on.
+        facts: validation score, stages, floor, seed, `grid`: how its lattice differs from the run's.
     """
 
     name: str
     model: ObservationModel
     motion: MotionModel
+    lattices: Lattices
     facts: dict[str, Any]
 
     @property
     def learned(self) -> bool:
         return self.name == LEARNED
 
-    def contender(self, hide_colour: bool = False) -> Contender:
+    def contender(self, hide_colour: bool = False) -> Filter:
         """As it enters a study."""
         name = f"{self.name}, colour hidden" if hide_colour else self.name
-        return Contender(name, self.model, self.motion, self.facts["floor"], self.learned, hide_colour)
+        return Filter(name, self.model, self.motion, self.facts["floor"], self.lattices, hide_colour)
 
 
-def store(folder: Path, name: str, trained: Trained, facts: dict[str, Any]) -> Stored:
+def store(folder: Path, name: str, trained: Trained, lattices: Lattices, facts: dict[str, Any]) -> Stored:
     """Write a trained model; returns it as it will be read."""
     described, tensors = describe(trained.model)
     stages = {
@@ -64,17 +66,21 @@ def store(folder: Path, name: str, trained: Trained, facts: dict[str, Any]) -> S
     motion = {f"motion.{key}": value for key, value in trained.motion.state_dict().items()}
     model = {f"model.{key}": value for key, value in tensors.items()}
     save_tensors(folder / f"{name}.safetensors", model | motion, whole)
-    return Stored(name, trained.model, trained.motion, whole)
+    return Stored(name, trained.model, trained.motion, lattices, whole)
 
 
-def stored(folder: Path, layout: RingLayout) -> dict[str, Stored]:
+def stored(run: Path, made_with: TrainConfig) -> dict[str, Stored]:
     """All models of a training run, by name.
+
+    Args:
+        run: its folder.
+        made_with: its settings, see `settings_of`.
 
     Raises:
         ConfigError: there are none.
         InputError: a file is damaged or newer than this program.
     """
-    found = {}
+    found, folder = {}, run / "models"
     for path in sorted(folder.glob("*.safetensors")):
         tensors, facts = load_tensors(path)
         own = {k.removeprefix("model."): v for k, v in tensors.items() if k.startswith("model.")}
@@ -82,7 +88,9 @@ def stored(folder: Path, layout: RingLayout) -> dict[str, Stored]:
         motion.load_state_dict(
             {k.removeprefix("motion."): v for k, v in tensors.items() if k.startswith("motion.")}
         )
-        found[facts["name"]] = Stored(facts["name"], rebuild(layout, facts["model"], own), motion, facts)
+        lattices = build_lattices(made_with, facts["grid"])
+        model = rebuild(lattices.layout, facts["model"], own)
+        found[facts["name"]] = Stored(facts["name"], model, motion, lattices, facts)
     if not found:
         raise ConfigError(
             "no trained models here", file=folder, place="model", expected="a run of `learnfilter train`"
@@ -90,13 +98,13 @@ def stored(folder: Path, layout: RingLayout) -> dict[str, Stored]:
     return found
 
 
-def chosen(run: Path, contender: str, layout: RingLayout) -> Stored:
+def chosen(run: Path, contender: str, made_with: TrainConfig) -> Stored:
     """One model of a training run.
 
     Raises:
         ConfigError: the run has none of that name.
     """
-    models = stored(run / "models", layout)
+    models = stored(run, made_with)
     if contender not in models:
         expected = " or ".join(models)
         raise ConfigError("no such model in this run", place="contender", expected=expected, got=contender)

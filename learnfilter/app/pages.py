@@ -11,6 +11,7 @@ import numpy as np
 from omegaconf import OmegaConf
 
 from learnfilter import __version__
+from learnfilter.ablation.verdict import ALL
 from learnfilter.app.judging import Judgement
 from learnfilter.app.models import LEARNED, Stored
 from learnfilter.report import Chart, Column, Curve, Forest, Table
@@ -50,16 +51,68 @@ def score_tables(found: Judgement) -> tuple[Table, ...]:
 
 
 def forests(found: Judgement) -> tuple[Forest, ...]:
-    """Paired differences, learned minus best analytic."""
-    label = {d.mark: f"after {d.mark} strip{'s' * (d.mark > 1)}" for d in found.differences}
-    rows_located = tuple((label[d.mark], _bar(d.located)) for d in found.differences)
-    rows_nll = tuple((label[d.mark], _bar(d.nll)) for d in found.differences)
+    """Paired differences, learned minus best analytic: after each number of strips, then by condition."""
     below, above = found.analytic, LEARNED
     note = f"{found.analytic} was chosen among the analytic models on validation drives."
-    return (
-        Forest("Located share gained, paired", rows_located, "share of drives", below, above, "+.2f", note),
-        Forest("Nats saved, paired", rows_nll, "nats", below, above, "+.2f", note),
+    whole = found.differences[0].condition
+    by_mark = [
+        (f"after {d.mark} strip{'s' * (d.mark > 1)}", d) for d in found.differences if d.condition == whole
+    ]
+    drawn = [("paired", by_mark)]
+    if whole == ALL:
+        at = [(d.condition, d) for d in found.differences if d.mark == found.mark and d.condition != ALL]
+        drawn.append((f"paired, after {found.mark} strips", at))
+    return tuple(
+        Forest(
+            f"{title}, {how}", tuple((label, _bar(getattr(d, field))) for label, d in rows),
+            unit, below, above, "+.2f", note,
+        )
+        for how, rows in drawn
+        for title, field, unit in (
+            ("Located share gained", "located", "share of drives"),
+            ("Nats saved", "nll", "nats"),
+        )
+    )  # fmt: skip
+
+
+def trust_table(found: Judgement) -> Table:
+    """Whether each model's own confidence can be believed."""
+    columns = (
+        Column("model"),
+        Column("calibration error", ".3f", "low"),
+        Column("coverage error", ".3f", "low"),
+        Column("metres until lock", ".1f", "low"),
+        Column("locked", ".2f", "high"),
+        Column("locked wrongly", ".3f", "low"),
     )
+    rows: tuple[tuple[Cell, ...], ...] = tuple(
+        (
+            t.contender, _bar(t.calibration), _bar(t.coverage), _bar(t.lock_metres), _bar(t.locked),
+            _bar(t.false_locks),
+        )
+        for t in found.trust
+    )  # fmt: skip
+    note = (
+        "Calibration of 'the pose is near the estimate' over every strip, debiased; coverage of 50, 90 and "
+        "95 % credible sets, worst; metres until lock, the drive's length where it never locked."
+    )
+    return Table("How far each model's confidence can be believed", columns, rows, note)
+
+
+def condition_table(found: Judgement) -> tuple[Table, ...]:
+    """Gains under each condition, where several were studied."""
+    own = [d for d in found.differences if d.mark == found.mark and d.condition != ALL]
+    if len(own) < 2:
+        return ()
+    columns = (
+        Column("condition"),
+        Column("located share gained", "+.2f"),
+        Column("nats saved", "+.2f"),
+        Column("p, Holm", ".3f"),
+    )
+    rows: tuple[tuple[Cell, ...], ...] = tuple((d.condition, _bar(d.located), _bar(d.nll), d.p) for d in own)
+    title = f"{LEARNED} minus {found.analytic} after {found.mark} strips, by condition"
+    return (Table(title, columns, rows, "p: exact McNemar test, adjusted for all conditions (Holm)."),)
 
 
 def score_charts(found: Judgement) -> tuple[Chart, ...]:
@@ -130,4 +183,17 @@ def table_lines(found: Judgement) -> Sequence[str]:
     for name in dict.fromkeys(score.contender for score in found.scores):
         row = [cell[name, m].located for m in marks]
         lines.append(f"{name:<{width}}  " + "".join(f"{_terse(i):>18}" for i in row))
-    return [*lines, "", found.verdict.sentence, found.verdict.confidence]
+    return [*lines, "", *_condition_lines(found), found.verdict.sentence, found.verdict.confidence]
+
+
+def _condition_lines(found: Judgement) -> Sequence[str]:
+    own = [d for d in found.differences if d.mark == found.mark and d.condition != ALL]
+    if len(own) < 2:
+        return ()
+    width = max(len(d.condition) for d in own)
+    head = f"{LEARNED} minus {found.analytic} after {found.mark} strips"
+    lines = [
+        f"{d.condition:<{width}}  {d.located.value:+.2f} ({d.located.low:+.2f} to {d.located.high:+.2f})"
+        for d in own
+    ]
+    return [head, *lines, ""]

@@ -3,11 +3,9 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any
 
 from learnfilter.app.config import hold
-
-# Strips after which filters are judged (ablation.study.MARKS; not imported, for that needs torch).
-MARKS = (1, 2, 4, 8, 16, 32)
 
 
 @dataclass
@@ -54,6 +52,24 @@ class StageConfig:
 
 
 @dataclass
+class ShakeConfig:
+    """How strips are changed while the matcher trains; see training.shake.ShakeSettings."""
+
+    share: float
+    light: float
+    tint: float
+    range: float
+    missing: float
+
+    def __post_init__(self) -> None:
+        hold("train.shake.share", 0 <= self.share <= 1, "a share in [0, 1]", self.share)
+        hold("train.shake.missing", 0 <= self.missing < 1, "a share in [0, 1)", self.missing)
+        hold("train.shake.range", 0 <= self.range < 1, "in [0, 1)", self.range)
+        for key in ("light", "tint"):
+            hold(f"train.shake.{key}", getattr(self, key) >= 0, "at least 0", getattr(self, key))
+
+
+@dataclass
 class RecipeConfig:
     """What is made up to train on, and the stages."""
 
@@ -68,6 +84,8 @@ class RecipeConfig:
     lengths: list[int]
     every_step: float
     hide_colour: float
+    shake: ShakeConfig
+    search: list[dict[str, Any]]
     tuning: StageConfig
     matching: StageConfig
     filtering: StageConfig
@@ -89,18 +107,41 @@ class RecipeConfig:
 
 
 @dataclass
+class BlocksConfig:
+    """Which rows of recorded drives are judged: blocks of `rows`, from block `first` on, every `every`-th."""
+
+    rows: int
+    first: int
+    every: int
+
+    def __post_init__(self) -> None:
+        hold("study.blocks.rows", self.rows >= 1, "at least 1", self.rows)
+        hold("study.blocks.first", self.first >= 0, "at least 0", self.first)
+        hold("study.blocks.every", self.every >= 1, "at least 1", self.every)
+
+
+@dataclass
 class StudyConfig:
-    """How much evidence is gathered, and after how many strips the verdict is given."""
+    """How much evidence is gathered, and how it is judged."""
 
     sites: int
     drives: int
     rows: int
+    marks: list[int]
     mark: int
+    within_m: float
+    within_deg: float
     hide_colour: bool
+    oracle: bool
+    blocks: BlocksConfig | None
 
     def __post_init__(self) -> None:
         for key in ("sites", "drives"):
             hold(f"study.{key}", getattr(self, key) >= 1, "at least 1", getattr(self, key))
         hold("study.rows", self.rows >= 2, "at least 2", self.rows)
-        hold("study.mark", self.mark in MARKS, f"one of {MARKS}", self.mark)
+        good = bool(self.marks) and min(self.marks) >= 1
+        hold("study.marks", good, "numbers of strips, at least 1", self.marks)
+        hold("study.mark", self.mark in self.marks, f"one of study.marks={self.marks}", self.mark)
         hold("study.mark", self.mark <= self.rows, f"at most study.rows={self.rows}", self.mark)
+        hold("study.within_m", self.within_m > 0, "above 0", self.within_m)
+        hold("study.within_deg", self.within_deg > 0, "above 0", self.within_deg)

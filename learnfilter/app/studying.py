@@ -1,57 +1,76 @@
-"""The sites a study is made on: invented, a plan of the user's with simulated drives, or recorded ones."""
+"""What a study is made on: invented sites, a plan of the user's with simulated drives, or recorded ones."""
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from dataclasses import dataclass
 from pathlib import Path
-from typing import NamedTuple
 
+from learnfilter.ablation.study import Arena
 from learnfilter.app.build import build_conditions, build_plan, build_strip, check_invented
-from learnfilter.app.config import SiteConfig
-from learnfilter.app.grounds import Rehearsal, build_lattices, drives_on, make_grounds
-from learnfilter.app.progress import progress
-from learnfilter.app.recipes import StudyConfig
+from learnfilter.app.config import SiteConfig, hold
+from learnfilter.app.grounds import Place, Rehearsal, drives_on, make_places
+from learnfilter.app.lattices import Lattices, build_lattices
+from learnfilter.app.recipes import BlocksConfig, StudyConfig
 from learnfilter.app.verb_settings import TrainConfig
 from learnfilter.core.errors import DriveError
 from learnfilter.drives.drive import Drive
 from learnfilter.drives.tables import read_drive
-from learnfilter.filtering.course import Ground
 from learnfilter.plan import FloorPlan
+from learnfilter.sim.conditions import Conditions
 
 # A single plan stands for a dozen invented sites with two drives each.
 DRIVES_ON_ONE_PLAN = 12
+AS_RECORDED = "as recorded"
 
 
-class Subject(NamedTuple):
+@dataclass(frozen=True)
+class Subject:
     """What models are judged on.
 
     Attributes:
-        grounds: sites with courses.
-        plans: the plan of each.
-        drives: the drives of each.
+        places: makes the sites, one after the other, each with the name of its condition.
+        count: how many there are.
         title: in words.
+        cache: folder for renderings of the user's plan; None for invented ones.
     """
 
-    grounds: Sequence[Ground]
-    plans: Sequence[FloorPlan]
-    drives: Sequence[Sequence[Drive]]
+    places: Callable[[], Iterator[tuple[str, Place]]]
+    count: int
     title: str
+    cache: Path | None = None
+
+
+def arena_of(
+    condition: str, place: Place, common: Lattices, others: Sequence[Lattices], cache: Path | None
+) -> Arena:
+    """A place laid on the common lattice, and on those of contenders that have their own."""
+    left, bottom, right, top = place.plan.bounds
+    return Arena(
+        condition,
+        common.ground(common.render(place.plan, cache), place.drives),
+        {own: own.ground(own.render(place.plan, cache), place.drives) for own in others if own != common},
+        place.fold,
+        ((left + right) / 2, (bottom + top) / 2),
+        place.units,
+        tuple(zip(place.worlds, place.drives, strict=False)),
+    )
 
 
 def study_subject(
     settings: TrainConfig,
     site: SiteConfig,
-    condition: object,
+    conditions: Mapping[str, object],
     study: StudyConfig,
     seed: int,
     recorded: Sequence[str] = (),
 ) -> Subject:
-    """Make or read what models are judged on.
+    """Say what models are judged on.
 
     Args:
         settings: of the training run: sensor, lattice.
         site: families to invent from, or the user's plan.
-        condition: a ConditionConfig, for simulated drives.
+        conditions: name -> ConditionConfig, for simulated drives.
         study: how much.
         seed: of what is invented.
         recorded: drive tables on `site.file`.
@@ -59,41 +78,71 @@ def study_subject(
     Raises:
         DriveError: a recorded drive has another number of columns than the models' sensor.
     """
-    lattices, strip = build_lattices(settings), build_strip(settings.strip)
-    conditions = build_conditions(condition)
+    named = {name: build_conditions(condition) for name, condition in conditions.items()}
     if site.file is None:
-        check_invented(site)
-        rehearsal = Rehearsal(
-            tuple(site.families),
-            study.sites,
-            study.drives,
-            study.rows,
-            0,
-            site.width_m,
-            site.depth_m,
-            conditions,
-        )
-        with progress("unseen sites") as tick:
-            made = make_grounds(rehearsal, strip, lattices, seed, "test", tick)
-        return Subject(
-            made.grounds, made.plans, made.drives, f"{study.sites} invented sites, none seen in training"
-        )
-    plan = build_plan(site)
+        return _invented(settings, site, named, study, seed)
+    plan, cache = build_plan(site), Path(settings.runs) / "cache"
     if recorded:
-        drives = tuple(read_drive(path, strip, depth_kind=settings.strip.depth_kind) for path in recorded)
-        title = f"{len(drives)} recorded drives on {plan.name}"
-    else:
-        count = study.drives * DRIVES_ON_ONE_PLAN
-        with progress("drives on your plan") as tick:
-            drives = drives_on(
-                plan, strip, conditions, count, study.rows, seed, lattices.robot_radius_m, tick
-            )
-        title = f"{count} simulated drives on {plan.name}"
-    for drive in drives:
-        if drive.strip.columns != strip.columns:
-            raise DriveError(
-                "other sensor than the models'", file=drive.name,
-                expected=f"{strip.columns} columns", got=drive.strip.columns,
+        hold("study.oracle", not study.oracle, "false: nobody knows all of a recorded drive", study.oracle)
+        place = _recorded(settings, plan, study.blocks, recorded)
+        title = f"{len(place.drives)} recorded drives on {plan.name}"
+        return Subject(lambda: iter([(AS_RECORDED, place)]), 1, title, cache)
+    strip, radius_m = build_strip(settings.strip), build_lattices(settings).robot_radius_m
+    count = study.drives * DRIVES_ON_ONE_PLAN
+
+    def places() -> Iterator[tuple[str, Place]]:
+        for name, condition in named.items():
+            yield name, drives_on(plan, strip, condition, count, study.rows, seed, radius_m)
+
+    return Subject(places, len(named), f"{count} simulated drives on {plan.name}", cache)
+
+
+def _invented(
+    settings: TrainConfig, site: SiteConfig, named: Mapping[str, Conditions], study: StudyConfig, seed: int
+) -> Subject:
+    check_invented(site)
+    strip, radius_m = build_strip(settings.strip), build_lattices(settings).robot_radius_m
+
+    def places() -> Iterator[tuple[str, Place]]:
+        for name, condition in named.items():
+            rehearsal = Rehearsal(
+                tuple(site.families), study.sites, study.drives, study.rows, 0,
+                site.width_m, site.depth_m, condition,
             )  # fmt: skip
-    ground = lattices.ground(lattices.render(plan, Path(settings.runs) / "cache"), drives)
-    return Subject((ground,), (plan,), (drives,), title)
+            for place in make_places(rehearsal, strip, radius_m, seed, "test"):
+                yield name, place
+
+    title = f"{study.sites} invented sites, none seen in training"
+    return Subject(places, len(named) * study.sites, title)
+
+
+def _recorded(
+    settings: TrainConfig, plan: FloorPlan, blocks: BlocksConfig | None, paths: Sequence[str]
+) -> Place:
+    """Recorded drives, whole or cut to every start that the blocks allow."""
+    strip = build_strip(settings.strip)
+    drives, units = [], []
+    for path in paths:
+        whole = read_drive(path, strip, depth_kind=settings.strip.depth_kind)
+        if whole.strip.columns != strip.columns:
+            raise DriveError(
+                "other sensor than the models'", file=whole.name,
+                expected=f"{strip.columns} columns", got=whole.strip.columns,
+            )  # fmt: skip
+        for start, end in _starts(whole, blocks):
+            drives.append(whole.part(start, end))
+            units.append(f"{whole.name}, to row {end}")
+    if not drives:
+        raise DriveError("no row lies in the blocks", place="study.blocks", got=blocks)
+    return Place(plan, tuple(drives), units=tuple(units))
+
+
+def _starts(drive: Drive, blocks: BlocksConfig | None) -> Iterator[tuple[int, int]]:
+    """First row and end of every stretch that is judged."""
+    if blocks is None:
+        yield 0, len(drive)
+        return
+    for block in range(blocks.first, -(-len(drive) // blocks.rows), blocks.every):
+        end = min(len(drive), (block + 1) * blocks.rows)
+        for start in range(block * blocks.rows, end):
+            yield start, end

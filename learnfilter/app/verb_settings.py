@@ -65,7 +65,7 @@ class AblateConfig(Common):
 
     model: str
     site: SiteConfig
-    condition: ConditionConfig
+    conditions: dict[str, ConditionConfig]
     study: StudyConfig
     drives: list[str]
 
@@ -73,6 +73,7 @@ class AblateConfig(Common):
         super().__post_init__()
         on_plan = self.site.file is not None or not self.drives
         hold("site.file", on_plan, "the plan on which `drives` were recorded", self.site.file)
+        hold("conditions", bool(self.conditions), "at least one", list(self.conditions))
 
 
 @dataclass

@@ -8,7 +8,7 @@ from __future__ import annotations
 from typing import NamedTuple
 
 import numpy as np
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
 
 from learnfilter.core.grid import PoseGrid
 from learnfilter.core.poses import wrap
@@ -112,3 +112,21 @@ def entropy(belief: NDArray) -> float:
     """Entropy of a belief in nats."""
     mass = belief[belief > 0]
     return float(-(mass * np.log(mass)).sum())
+
+
+def credible_rank(belief: ArrayLike, truth: tuple[int, ...], rng: np.random.Generator) -> float:
+    """Mass of the smallest highest-density set that reaches the true pose.
+
+    Uniform on [0, 1] over many drives if the belief is calibrated; ties (and the true pose's own
+    mass) are split at random so that this holds for a discrete belief too.
+
+    Args:
+        belief: any shape, probabilities that sum to one.
+        truth: index of the true pose in it.
+        rng: source of the split.
+
+    Source: Hyndman 1996 (highest-density sets); Czado, Gneiting and Held 2009 (the randomised rank).
+    """
+    belief = np.asarray(belief)
+    above = belief[belief > belief[truth]].sum()
+    return float(above + rng.random() * belief[belief == belief[truth]].sum())

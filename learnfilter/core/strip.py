@@ -104,6 +104,12 @@ class RingLayout:
         """[W'] whether any raw column serves the position; where none does there is no evidence."""
         return np.asarray(self.source) >= 0
 
+    def every(self, step: int) -> RingLayout:
+        """The layout that uses every `step`-th position that a column serves; the others give no evidence."""
+        served = np.cumsum(self.present()) - 1
+        kept = self.present() & (served % step == 0)
+        return replace(self, source=tuple(int(s) for s in np.where(kept, self.source, -1)))
+
     def lay(self, raw: NDArray, axis: int = -1) -> NDArray:
         """Bring the raw column axis (W) of an array into strip positions (W'); gaps become NaN."""
         laid = np.moveaxis(np.take(raw, np.maximum(self.source, 0), axis=axis), axis, -1)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -49,6 +49,20 @@ class Drive:
 
     def __len__(self) -> int:
         return len(self.time_s)
+
+    def part(self, start: int, end: int) -> Drive:
+        """Rows `start` to before `end` as a drive of its own, named after its first row."""
+        odometry = self.odometry[start:end].copy()
+        odometry[:1] = 0.0
+        return replace(
+            self,
+            time_s=self.time_s[start:end],
+            odometry=odometry,
+            depth_m=self.depth_m[start:end],
+            rgb=None if self.rgb is None else self.rgb[start:end],
+            reference=None if self.reference is None else self.reference[start:end],
+            name=f"{self.name}, from row {start}",
+        )
 
     def sensor_reference(self) -> NDArray[np.float64]:
         """[t 3] reference pose of the sensor, NaN where unknown.

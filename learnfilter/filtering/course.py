@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 from torch import Tensor
 
 from learnfilter.core.errors import DriveError
+from learnfilter.core.grid import PoseGrid
 from learnfilter.drives.drive import Drive
 from learnfilter.filtering.rollout import Steps, weighed_steps
 from learnfilter.observe.contract import Strips
@@ -24,6 +25,24 @@ class Truth(NamedTuple):
     cell: Tensor
     heading: Tensor
     own: NDArray[np.bool_]
+
+
+class Scored(NamedTuple):
+    """Where beliefs about one drive are scored.
+
+    Attributes:
+        grid: a lattice; beliefs on others are summed to it.
+        heading, row, column: [s] the true pose on it.
+    """
+
+    grid: PoseGrid
+    heading: NDArray[np.int64]
+    row: NDArray[np.int64]
+    column: NDArray[np.int64]
+
+    def pose(self, step: int) -> tuple[int, int, int]:
+        """Index of the true pose at a step."""
+        return int(self.heading[step]), int(self.row[step]), int(self.column[step])
 
 
 class Course(NamedTuple):
@@ -45,6 +64,11 @@ class Course(NamedTuple):
     def length(self) -> int:
         """Number of weighed strips."""
         return len(self.steps.rows)
+
+    def scored_on(self, site: Site) -> Scored:
+        """The true poses on the lattice of the site the course was cut for."""
+        cells = site.cells[self.truth.cell.numpy()]
+        return Scored(site.grid, self.truth.heading.numpy(), cells[:, 0], cells[:, 1])
 
 
 class Ground(NamedTuple):

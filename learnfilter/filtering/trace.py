@@ -11,8 +11,10 @@ import torch
 from numpy.typing import NDArray
 from torch import Tensor
 
-from learnfilter.core.estimate import entropy, modes
-from learnfilter.filtering.course import Course
+from learnfilter.core.estimate import credible_rank, entropy, modes
+from learnfilter.core.regrid import regrid
+from learnfilter.core.seeds import stream
+from learnfilter.filtering.course import Course, Scored
 from learnfilter.filtering.grid_filter import lattice_of, start
 from learnfilter.filtering.motion import MotionModel
 from learnfilter.filtering.rollout import rollout
@@ -27,14 +29,16 @@ class Trace(NamedTuple):
         estimate: [s 3] mean of the best mode, sensor pose.
         mass: [s] belief near it.
         log_truth: [s] nats, log-probability of the true lattice pose.
+        rank: [s] randomised credible rank of the true lattice pose.
         entropy: [s] nats.
         seconds: wall time a strip, mean over the drive (strips are scored many at once).
-        marginals: [s r c] belief summed over headings, where asked, else None.
+        marginals: [s r c] belief summed over headings, on the lattice it is scored on; None if not asked.
     """
 
     estimate: NDArray[np.float64]
     mass: NDArray[np.float64]
     log_truth: NDArray[np.float64]
+    rank: NDArray[np.float64]
     entropy: NDArray[np.float64]
     seconds: float
     marginals: NDArray[np.float32] | None
@@ -43,7 +47,9 @@ class Trace(NamedTuple):
 TOGETHER = 16  # strips scored at once: each pass over a site's table then serves many
 
 
-def _scored(model: ObservationModel, course: Course, count: int, features: object) -> Callable[[int], Tensor]:
+def _in_order(
+    model: ObservationModel, course: Course, count: int, features: object
+) -> Callable[[int], Tensor]:
     """step -> [1 n h], for steps asked for in order."""
     held: dict[int, Tensor] = {}
 
@@ -68,6 +74,7 @@ def trace(
     steps: int | None = None,
     features: object = None,
     keep_marginals: bool = False,
+    scored: Scored | None = None,
 ) -> Trace:
     """Filter the first `steps` strips of a course.
 
@@ -78,32 +85,43 @@ def trace(
         steps: at most this many strips; None for all.
         features: `model.read(site)`, if at hand.
         keep_marginals: keep the belief's plane after each strip, for pictures.
+        scored: another lattice on which the true pose's probability is read; None for the site's own.
     """
     features = model.read(site) if features is None else features
     lattice = lattice_of(site)
     count = course.length if steps is None else min(steps, course.length)
-    flat, heading = lattice.cells[course.truth.cell], course.truth.heading
+    scored = scored or course.scored_on(site)
+    ranks = stream(0, "rank", course.name)
     columns: list[tuple] = []
     planes = []
     clock = time.perf_counter()
     states = rollout(
         start(lattice, 1),
         course.steps.odometry[:count, None],
-        _scored(model, course, count, features),
+        _in_order(model, course, count, features),
         lattice,
         motion,
         floor,
     )
     for step, state in enumerate(states):
         took = time.perf_counter() - clock
-        belief = state.belief[0]
-        true = float(belief.flatten(1)[heading[step], flat[step]])
-        mode = modes(belief.numpy(), site.grid)[0]
-        columns.append((mode.pose, mode.mass, np.log(max(true, 1e-30)), entropy(belief.numpy()), took))
+        belief = state.belief[0].numpy()
+        mode = modes(belief, site.grid)[0]
+        common, at = regrid(belief, site.grid, scored.grid), scored.pose(step)
+        log_truth = np.log(max(float(common[at]), 1e-30))
+        columns.append(
+            (mode.pose, mode.mass, log_truth, credible_rank(common, at, ranks), entropy(belief), took)
+        )
         if keep_marginals:
-            planes.append(belief.sum(0).numpy())
+            planes.append(common.sum(0))
         clock = time.perf_counter()
-    estimate, mass, log_truth, nats, seconds = (np.array(c) for c in zip(*columns, strict=True))
+    estimate, mass, log_truth, rank, nats, seconds = (np.array(c) for c in zip(*columns, strict=True))
     return Trace(
-        estimate, mass, log_truth, nats, float(seconds.mean()), np.stack(planes) if keep_marginals else None
+        estimate,
+        mass,
+        log_truth,
+        rank,
+        nats,
+        float(seconds.mean()),
+        np.stack(planes) if keep_marginals else None,
     )

@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 import shapely
 from numpy.typing import NDArray
+from shapely import GeometryType
 from shapely.geometry import Polygon, box
 
 from learnfilter.core.errors import PlanError
@@ -83,17 +84,28 @@ def without_holes(rings: Sequence[NDArray[np.float64]]) -> list[NDArray[np.float
         return [np.asarray(rings[0])]
     pieces: list[NDArray[np.float64]] = []
     pending = _polygons(shapely.make_valid(polygon))
-    while pending:
-        piece = pending.pop()
-        if not piece.interiors:
-            pieces.append(np.asarray(piece.exterior.coords))
-            continue
-        left, bottom, right, top = piece.bounds
-        cut = piece.interiors[0].centroid.x
-        for half in (box(left, bottom, cut, top), box(cut, bottom, right, top)):
-            pending.extend(_polygons(piece.intersection(half)))
+    while len(pending):
+        holed = shapely.get_num_interior_rings(pending) > 0
+        pieces += [np.asarray(piece.exterior.coords) for piece in pending[~holed]]
+        halves = [half for piece in pending[holed] for half in _halves(piece)]
+        pending = _polygons(shapely.intersection(np.repeat(pending[holed], 2), halves))
     return pieces
 
 
-def _polygons(shape: shapely.Geometry) -> list[Polygon]:
-    return [part for part in shapely.get_parts(shape) if part.geom_type == "Polygon" and part.area > 0]
+def _halves(piece: Polygon) -> tuple[Polygon, Polygon]:
+    """Two boxes over a piece that share a side through its middle hole, across its longer extent.
+
+    The middle one, since a scanned floor has holes by the thousand: cut off one by one they cost their
+    number squared.
+    """
+    left, bottom, right, top = piece.bounds
+    centres = shapely.get_coordinates(shapely.centroid(piece.interiors))
+    x, y = np.sort(centres, axis=0)[len(centres) // 2]
+    if right - left > top - bottom:
+        return box(left, bottom, x, top), box(x, bottom, right, top)
+    return box(left, bottom, right, y), box(left, y, right, top)
+
+
+def _polygons(shapes: shapely.Geometry | NDArray[np.object_]) -> NDArray[np.object_]:
+    parts = shapely.get_parts(shapes)
+    return parts[(shapely.get_type_id(parts) == GeometryType.POLYGON) & (shapely.area(parts) > 0)]

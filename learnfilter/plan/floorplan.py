@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import hashlib
 from dataclasses import dataclass, field
+from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -87,7 +88,7 @@ class FloorPlan:
             outlines = tuple(_frozen(closed(np.asarray(o, np.float64))) for o in getattr(self, key))
             object.__setattr__(self, key, outlines)
 
-    @property
+    @cached_property  # asked for once an outline, and a scanned floor has outlines by the thousand
     def bounds(self) -> tuple[float, float, float, float]:
         """left, bottom, right, top in metres."""
         xy = self.segments.reshape(-1, 2)

@@ -10,8 +10,13 @@ from typing import Any
 from learnfilter.core.errors import PlanError
 from learnfilter.plan.floorplan import FloorPlan
 from learnfilter.plan.geojson import read_geojson
+from learnfilter.plan.picture import read_picture
 
-READERS: dict[str, Callable[..., FloorPlan]] = {".geojson": read_geojson, ".json": read_geojson}
+READERS: dict[str, Callable[..., FloorPlan]] = {
+    ".geojson": read_geojson,
+    ".json": read_geojson,
+    ".png": read_picture,
+}
 
 
 def read_plan(path: str | Path, **options: Any) -> FloorPlan:

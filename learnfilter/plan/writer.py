@@ -34,7 +34,10 @@ def write_plan(plan: FloorPlan, path: str | Path) -> None:
 
 
 def _features(plan: FloorPlan) -> Iterator[dict[str, Any]]:
-    solids = list(plan.solids)
+    places: dict[bytes, list[int]] = {}
+    for place, solid in enumerate(plan.solids):
+        places.setdefault(solid.tobytes(), []).append(place)
+    done = 0  # solids keep their order
     for run in _runs(plan):
         first = run[0]
         line = np.vstack([plan.segments[run, :2], plan.segments[run[-1:], 2:]])
@@ -44,15 +47,15 @@ def _features(plan: FloorPlan) -> Iterator[dict[str, Any]]:
             properties["state"] = DOOR_STATES[plan.state[first]]
         if plan.finish[first] >= 0:
             properties["finish"] = plan.finishes[plan.finish[first]].name
-        bounded = next((i for i, solid in enumerate(solids) if np.array_equal(solid, line)), None)
+        bounded = next((place for place in places.get(line.tobytes(), ()) if place >= done), None)
         if kind == DOOR or bounded is None:
             yield _feature("LineString", line, properties)
             continue
-        for solid in solids[:bounded]:  # solids keep their order
+        for solid in plan.solids[done:bounded]:
             yield _feature("Polygon", solid, {"kind": "solid", "edges": False})
         yield _feature("Polygon", line, properties)
-        solids = solids[bounded + 1 :]
-    for solid in solids:
+        done = bounded + 1
+    for solid in plan.solids[done:]:
         yield _feature("Polygon", solid, {"kind": "solid", "edges": False})
     for outline in plan.unmapped:
         yield _feature("Polygon", outline, {"kind": "unmapped"})

@@ -77,8 +77,9 @@ def live_cells(plan: FloorPlan, grid: PoseGrid, robot_radius_m: float) -> NDArra
     if not robot_radius_m > 0:
         raise ConfigError("the robot has no size", place="robot_radius_m", got=robot_radius_m)
     fine = _finer(plan, grid, robot_radius_m)
-    clear = _clear_points(plan, fine, robot_radius_m)
-    outdoors = _outdoors(plan, fine, robot_radius_m) & clear
+    covered = _covered_points(plan, fine)
+    clear = _clear_points(plan, fine, robot_radius_m) & ~covered
+    outdoors = _outdoors(plan, fine, robot_radius_m, covered) & clear
     if plan.seed is None:
         reached = _largest(plan, fine, clear, outdoors)
     else:
@@ -147,9 +148,9 @@ def _finer(plan: FloorPlan, grid: PoseGrid, radius: float) -> _Lattice:
     )
 
 
-def _clear_points(plan: FloorPlan, fine: _Lattice, radius: float) -> NDArray[np.bool_]:
-    barrier = (plan.kind != DOOR) | (plan.state == SHUT)
-    clear = fine.distance(plan.segments[barrier], radius + fine.pitch_m) > radius
+def _covered_points(plan: FloorPlan, fine: _Lattice) -> NDArray[np.bool_]:
+    """Inside of solid or unmapped area."""
+    covered = np.zeros((fine.rows, fine.columns), dtype=bool)
     x, y = fine.x(), fine.y()
     for outline in (*plan.solids, *plan.unmapped):
         (left, bottom), (right, top) = outline.min(axis=0), outline.max(axis=0)
@@ -157,15 +158,28 @@ def _clear_points(plan: FloorPlan, fine: _Lattice, radius: float) -> NDArray[np.
         rows = slice(*np.searchsorted(y, [bottom, top]))
         area = shapely.Polygon(outline)
         shapely.prepare(area)
-        clear[rows, columns] &= ~shapely.contains_xy(area, *np.meshgrid(x[columns], y[rows]))
-    return clear
+        covered[rows, columns] |= shapely.contains_xy(area, *np.meshgrid(x[columns], y[rows]))
+    return covered
 
 
-def _outdoors(plan: FloorPlan, fine: _Lattice, radius: float) -> NDArray[np.bool_]:
-    """What a disc of OUTSIDE_REACH_M rolling in from beyond the bounds sweeps, all doors shut."""
+def _clear_points(plan: FloorPlan, fine: _Lattice, radius: float) -> NDArray[np.bool_]:
+    barrier = (plan.kind != DOOR) | (plan.state == SHUT)
+    return fine.distance(plan.segments[barrier], radius + fine.pitch_m) > radius
+
+
+def _outdoors(
+    plan: FloorPlan, fine: _Lattice, radius: float, covered: NDArray[np.bool_]
+) -> NDArray[np.bool_]:
+    """What a disc of OUTSIDE_REACH_M rolling in from beyond the bounds sweeps, all doors shut.
+
+    Its centre keeps out of covered area, so a plan that unmapped area surrounds has no outdoors.
+    """
     reach = max(OUTSIDE_REACH_M, radius)
-    parts, _ = ndimage.label(fine.distance(plan.segments, reach + fine.pitch_m) > reach)
-    core = parts == parts[0, 0]  # the rim is wide enough for its corner to be clear
+    parts, _ = ndimage.label((fine.distance(plan.segments, reach + fine.pitch_m) > reach) & ~covered)
+    # the rim is wide enough for its corners to be clear of walls
+    core = np.isin(parts, parts[[0, 0, -1, -1], [0, -1, 0, -1]]) & (parts > 0)
+    if not core.any():
+        return core
     # shorter than the disc's radius, so never through a wall
     return ndimage.distance_transform_edt(~core, sampling=fine.pitch_m) <= reach - radius + fine.pitch_m
 

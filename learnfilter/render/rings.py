@@ -18,7 +18,7 @@ from learnfilter.render.rays import build_scene, cast_fan
 from learnfilter.render.site import Site
 
 # Part of every site's key: raise it when the same plan and settings render differently than before.
-RENDER_VERSION = 1
+RENDER_VERSION = 2
 WINDOWS = ("unsure", "solid", "clear")
 # An unknown door or window drawn this close before a wall hides nothing: the ray ends at the wall.
 COINCIDE_M = 0.01

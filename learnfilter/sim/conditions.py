@@ -18,6 +18,10 @@ class Conditions:
         light_kelvin: colour temperature of the light under a camera balanced for daylight; None for
             neutral light with a slight tint (8 % a channel).
         finishes: 'usual' or 'unseen': which colours invented surfaces take.
+        layout: 'usual' or 'unseen': whether invented sites have the proportions asked for, or half as
+            wide again and two thirds as deep (as far as sites go), drawn from other seeds.
+        family: 'usual' or 'unseen': whether invented sites are of the family asked for, or of one with
+            slanted walls.
         missing_scale: factor on the chance that a reading is missing.
         range_scale: factor on every measured range (a sensor out of calibration).
         odometry_noise_scale: factor on the spread of odometry noise.
@@ -38,6 +42,8 @@ class Conditions:
     light_level: float = 1.0
     light_kelvin: float | None = None
     finishes: str = "usual"
+    layout: str = "usual"
+    family: str = "usual"
     missing_scale: float = 1.0
     range_scale: float = 1.0
     odometry_noise_scale: float = 1.0
@@ -60,7 +66,8 @@ class Conditions:
             self._hold(key, getattr(self, key) >= 0, "a number not below 0")
         for key in ("moved_by_m", "parked_s"):
             self._hold(key, getattr(self, key) >= 0, "a number not below 0")
-        self._hold("finishes", self.finishes in ("usual", "unseen"), "'usual' or 'unseen'")
+        for key in ("finishes", "layout", "family"):
+            self._hold(key, getattr(self, key) in ("usual", "unseen"), "'usual' or 'unseen'")
         kelvin = self.light_kelvin
         self._hold("light_kelvin", kelvin is None or 1667 <= kelvin <= 25000, "none or 1667 to 25000")
 

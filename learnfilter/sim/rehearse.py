@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import NamedTuple
+
 import numpy as np
 
 from learnfilter.core.poses import compose
@@ -11,13 +13,29 @@ from learnfilter.drives.drive import Drive
 from learnfilter.plan.floorplan import FloorPlan
 from learnfilter.sim.conditions import Conditions
 from learnfilter.sim.driver import explore
-from learnfilter.sim.families import make_plan
+from learnfilter.sim.families import SIZES_M, UNSEEN_FAMILY, make_plan
 from learnfilter.sim.odometry import measure_odometry
 from learnfilter.sim.sensor import sense
 from learnfilter.sim.world import ROBOT_RADIUS_M, World, build_world
 
 # Share of sites whose plan does not say how surfaces look.
 WITHOUT_FINISHES_SHARE = 0.2
+# Width and depth of an unseen layout, as parts of those asked for.
+UNSEEN_PROPORTIONS = (3 / 2, 2 / 3)
+
+
+class Rehearsed(NamedTuple):
+    """An invented site.
+
+    Attributes:
+        plan: what the robot is given.
+        drives: through the site, each on another day.
+        worlds: [one a drive] what stood there that day, which the robot is never told.
+    """
+
+    plan: FloorPlan
+    drives: tuple[Drive, ...]
+    worlds: tuple[World, ...]
 
 
 def rehearse(
@@ -71,6 +89,11 @@ def rehearse(
     )
 
 
+def drawn_family(family: str, conditions: Conditions) -> str:
+    """The family that is drawn where this one is asked for."""
+    return UNSEEN_FAMILY if conditions.family == "unseen" else family
+
+
 def rehearse_site(
     seed: int,
     family: str,
@@ -84,11 +107,11 @@ def rehearse_site(
     index: int = 0,
     without_finishes: float = WITHOUT_FINISHES_SHARE,
     robot_radius_m: float = ROBOT_RADIUS_M,
-) -> tuple[FloorPlan, tuple[Drive, ...]]:
-    """One invented site and drives through it, fully determined by seed, family and index.
+) -> Rehearsed:
+    """One invented site and drives through it, fully determined by seed, family, index and conditions.
 
-    The layout is the same under any conditions.  Each drive meets the site on another day: other
-    furniture, doors, light and people.
+    The layout is the same under all conditions but an unseen layout or family.  Each drive meets the site
+    on another day: other furniture, doors, light and people.
 
     Args:
         seed, family, index: which site.
@@ -101,26 +124,33 @@ def rehearse_site(
         robot_radius_m: of the robot.
 
     Returns:
-        What the robot is given, and its drives.
+        What the robot is given, its drives and their worlds.  Plan and drives are named after seed,
+        family and index under any conditions.
 
     Raises:
         ConfigError: unknown family or a size out of range.
     """
     path = ("rehearse", family, index)
+    layout: tuple[str, ...] = ("plan",)
+    if conditions.layout == "unseen":
+        sizes = np.multiply(UNSEEN_PROPORTIONS, (width_m, depth_m))
+        width_m, depth_m = (float(size) for size in np.clip(sizes, *SIZES_M))
+        layout = ("unseen", "plan")
     plan = make_plan(
-        family,
-        stream(seed, *path, "plan"),
+        drawn_family(family, conditions),
+        stream(seed, *path, *layout),
         width_m,
         depth_m,
         palette=conditions.finishes,
         with_finishes=stream(seed, *path, "finishes").random() >= without_finishes,
         name=f"{family}-{seed}-{index}",
     )
-    drives = []
-    for day in range(n_drives):
-        world = build_world(
-            plan, stream(seed, *path, "world", day), conditions, robot_radius_m=robot_radius_m
-        )
-        rng = stream(seed, *path, "drive", day)
-        drives.append(rehearse(world, strip, rng, rows, f"{plan.name}-{day}"))
-    return plan, tuple(drives)
+    worlds = tuple(
+        build_world(plan, stream(seed, *path, "world", day), conditions, robot_radius_m=robot_radius_m)
+        for day in range(n_drives)
+    )
+    drives = tuple(
+        rehearse(world, strip, stream(seed, *path, "drive", day), rows, f"{plan.name}-{day}")
+        for day, world in enumerate(worlds)
+    )
+    return Rehearsed(plan, drives, worlds)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from pathlib import Path
 from typing import NamedTuple
 
@@ -21,6 +21,7 @@ from learnfilter.training.analytic import Fits, make_blend
 from learnfilter.training.loop import Log, StageResult, StageSettings, run_stage
 from learnfilter.training.matching import matching_loss
 from learnfilter.training.samples import stretch
+from learnfilter.training.shake import ShakeSettings, shake
 from learnfilter.training.through_filter import filter_loss, step_losses
 from learnfilter.training.validation import validate
 
@@ -38,6 +39,7 @@ class FilterSettings:
         hide_colour: share of iterations in which strips lose their colour, so that one model serves
             plans and sensors without.
         validate_steps: strips of each validation course.
+        shake: how strips are changed in both stages of the matcher.
     """
 
     lengths: tuple[int, ...] = (4, 8, 12)
@@ -45,6 +47,7 @@ class FilterSettings:
     floor: float = 1e-4
     hide_colour: float = 0.2
     validate_steps: int = 8
+    shake: ShakeSettings = ShakeSettings()
 
 
 @dataclass(frozen=True)
@@ -68,6 +71,7 @@ class Trainer:
 
     Args:
         train, held_out: grounds to train on and to choose weights by.
+        scored: the held-out grounds on the lattice on which beliefs are scored, common to all models.
         filtering, matching: see their classes.
         seed: all draws come from streams under it.
         folder: for checkpoints.
@@ -78,6 +82,7 @@ class Trainer:
         self,
         train: Sequence[Ground],
         held_out: Sequence[Ground],
+        scored: Sequence[Ground],
         filtering: FilterSettings,
         matching: MatchingSettings,
         seed: int,
@@ -85,7 +90,7 @@ class Trainer:
         log: Log,
         tick: Tick,
     ):
-        self.train, self.held_out = train, held_out
+        self.train, self.held_out, self.scored = train, held_out, scored
         self.filtering, self.matching = filtering, matching
         self.seed, self.folder, self.log, self.tick = seed, folder, log, tick
 
@@ -94,8 +99,7 @@ class Trainer:
     ) -> Trained:
         """Fit exponents and motion spread of an analytic blend through the filter."""
         model, moves = make_blend(kind, layout, fits), MotionModel(motion)
-        stage = replace(stage, name=f"{stage.name}-{kind}")
-        return Trained(model, moves, {stage.name: self._filter_stage(model, moves, stage, hide_colour=0.0)})
+        return Trained(model, moves, {stage.name: self._filter_stage(model, moves, stage)})
 
     def train_matcher(
         self,
@@ -110,7 +114,8 @@ class Trainer:
         generator = torch.Generator().manual_seed(int(stream(self.seed, "weights").integers(2**31)))
         model, moves = Matcher(layout, birth, shape, generator), MotionModel(motion)
         stages = {matching.name: self._matching_stage(model, moves, matching)}
-        stages[filtering.name] = self._filter_stage(model, moves, filtering, self.filtering.hide_colour)
+        own = self.filtering
+        stages[filtering.name] = self._filter_stage(model, moves, filtering, own.hide_colour, own.shake)
         return Trained(model, moves, stages)
 
     def _matching_stage(self, model: Matcher, motion: MotionModel, stage: StageSettings) -> StageResult:
@@ -121,6 +126,7 @@ class Trainer:
             strips, truth = ground.stills
             if rng.random() < self.filtering.hide_colour:
                 strips = strips.without_colour()
+            strips = shake(strips, self.filtering.shake, len(strips.depth_m), rng)
             return matching_loss(
                 model, ground.site, (strips, truth), rng, self.matching.strips, self.matching.decoys
             )
@@ -128,7 +134,12 @@ class Trainer:
         return self._run(stage, {"model": model}, loss_at, model, motion)
 
     def _filter_stage(
-        self, model: ObservationModel, motion: MotionModel, stage: StageSettings, hide_colour: float
+        self,
+        model: ObservationModel,
+        motion: MotionModel,
+        stage: StageSettings,
+        hide_colour: float = 0.0,
+        shaken: ShakeSettings = ShakeSettings(),  # noqa: B008 - immutable
     ) -> StageResult:
         def loss_at(iteration: int) -> Tensor:
             rng = stream(self.seed, stage.name, iteration)
@@ -137,6 +148,7 @@ class Trainer:
             odometry, strips, cell, heading = stretch(ground.courses, length, rng)
             if rng.random() < hide_colour:
                 strips = strips.without_colour()
+            strips = shake(strips, shaken, odometry.shape[1], rng)
             losses = step_losses(
                 model, motion, ground.site, odometry, strips, cell, heading, self.filtering.floor
             )
@@ -157,7 +169,7 @@ class Trainer:
             stage,
             modules,
             loss_at,
-            lambda: validate(model, motion, self.held_out, floor, steps),
+            lambda: validate(model, motion, self.held_out, self.scored, floor, steps),
             self.folder,
             self.log,
             self.tick,

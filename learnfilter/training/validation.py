@@ -16,25 +16,34 @@ from learnfilter.training.loop import Validation
 
 
 def validate(
-    model: ObservationModel, motion: MotionModel, grounds: Sequence[Ground], floor: float, steps: int
+    model: ObservationModel,
+    motion: MotionModel,
+    grounds: Sequence[Ground],
+    scored: Sequence[Ground],
+    floor: float,
+    steps: int,
 ) -> Validation:
     """Mean nats of the true pose over the first `steps` strips of every course, from unknown starts.
 
     Args:
         model, motion, floor: the filter.
         grounds: sites the training has not seen.
+        scored: the same on the lattice on which beliefs are scored.
         steps: strips of each course.
 
     Returns:
         The score, the located share after the last strip, and the first course's last belief.
     """
     nats, shares, picture = [], [], None
-    for number, ground in enumerate(grounds):
+    for number, (ground, common) in enumerate(zip(grounds, scored, strict=True)):
         with torch.no_grad():
             features = model.read(ground.site)
-        for course in ground.courses:
+        for course, judged in zip(ground.courses, common.courses, strict=True):
             wanted = number == 0 and picture is None
-            result = trace(model, motion, ground.site, course, floor, steps, features, keep_marginals=wanted)
+            result = trace(
+                model, motion, ground.site, course, floor, steps, features, keep_marginals=wanted,
+                scored=judged.scored_on(common.site),
+            )  # fmt: skip
             nats.append(-result.log_truth.mean())
             last = len(result.estimate) - 1
             shares.append(float(located(result.estimate[last], course.poses[last])))

@@ -10,12 +10,12 @@ from hypothesis import strategies as st
 from scipy import stats
 from sklearn.calibration import calibration_curve
 
+from learnfilter.core.estimate import credible_rank
 from learnfilter.ablation.statistics import (
     Interval,
     bootstrap,
     calibration_error,
     coverage,
-    credible_rank,
     debiased_calibration_error,
     holm,
     mcnemar_exact,

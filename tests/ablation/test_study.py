@@ -6,7 +6,7 @@ import math
 import numpy as np
 import pytest
 
-from learnfilter.ablation.study import Contender, read_rows, run_study
+from learnfilter.ablation.study import Arena, Filter, Marks, read_rows, run_study
 from learnfilter.core.errors import InputError
 from learnfilter.filtering.course import Ground
 from learnfilter.filtering.motion import MotionModel
@@ -17,8 +17,8 @@ from tests.training.drives import drive_on_small_site
 FLOOR = 1e-4
 
 
-def contender(name="blend", hide_colour=False) -> Contender:
-    return Contender(name, blend(), MotionModel(), FLOOR, False, hide_colour)
+def contender(name="blend", hide_colour=False) -> Filter:
+    return Filter(name, blend(), MotionModel(), FLOOR, hide_colour=hide_colour)
 
 
 def ground(*lengths: int) -> Ground:
@@ -28,7 +28,7 @@ def ground(*lengths: int) -> Ground:
 
 
 def study(file, contenders, grounds, condition="usual"):
-    return run_study(contenders, grounds, condition, file, lambda *_: None)
+    return run_study(contenders, [Arena(condition, g) for g in grounds], Marks(), file, lambda *_: None)
 
 
 def timeless(row):

@@ -7,20 +7,19 @@ import pytest
 from scipy import stats
 
 from learnfilter.ablation.statistics import Interval
-from learnfilter.ablation.study import MARKS
 from learnfilter.ablation.verdict import choose_analytic, column, decide, differences, marks_of, scores
-from learnfilter.app import recipes
 from learnfilter.core.errors import ConfigError
 from learnfilter.core.seeds import stream
 
 MARK = 4
 
 
-def rows(learned, analytic, *, one_site=False, nats=(1.0, 2.0), mark=MARK):
+def rows(learned, analytic, *, one_site=False, nats=(1.0, 2.0), mark=MARK, condition="usual"):
     """A drive a value: located by the learned model, and by the analytic one, after `mark` strips."""
     return [
         {
             "contender": name,
+            "condition": condition,
             "site": "site" if one_site else f"site {number}",
             "drive": f"drive {number:02d}",
             f"located_{mark}": float(value),
@@ -34,11 +33,6 @@ def rows(learned, analytic, *, one_site=False, nats=(1.0, 2.0), mark=MARK):
 def verdict(table, mark=MARK):
     found = differences(table, "learned", "analytic", stream(0, "test"))
     return decide(table, "learned", "analytic", found, mark)
-
-
-def test_marks_of_settings_and_of_studies_are_the_same():
-    """The settings repeat them, for they may not import torch."""
-    assert recipes.MARKS == MARKS
 
 
 def test_a_model_that_is_better_everywhere_is_shipped():
@@ -125,7 +119,7 @@ def test_short_drives_are_no_number_rather_than_zero():
     for row in table:
         if row["drive"] != "drive 01":
             row |= {"located_8": 1.0, "nll_8": 0.5}
-    order = ["drive 00", "drive 01", "drive 02"]
+    order = [("usual", f"drive {number:02d}") for number in range(3)]
     assert np.isnan(column(table, "learned", "located_8", order)).tolist() == [False, True, False]
     after = {s.mark: s for s in scores(table, ["learned"], stream(0, "test"))}
     assert after[4].located.value == pytest.approx(2 / 3)
@@ -135,6 +129,36 @@ def test_short_drives_are_no_number_rather_than_zero():
 def test_strips_that_no_drive_reached_have_no_row_in_a_table():
     """Four strips at most: marks beyond are left out."""
     assert marks_of(rows([1], [0])) == [4]
+
+
+def test_conditions_are_told_apart_and_taken_together():
+    """Ten sites won under one condition and level under another: half a share gained over both, by site."""
+    level = [1, 0] * 5
+    table = rows([1] * 10, [0] * 10) + rows(level, level, condition="dark")
+    whole, usual, dark = differences(table, "learned", "analytic", stream(0, "test"))
+    assert [d.condition for d in (whole, usual, dark)] == ["all conditions", "usual", "dark"]
+    assert [d.located.value for d in (whole, usual, dark)] == [0.5, 1.0, 0.0]
+    assert [d.located.n for d in (whole, usual, dark)] == [10, 10, 10]
+
+
+def test_p_values_are_adjusted_for_the_number_of_conditions():
+    """(0, 6) discordant pairs: exact McNemar p = 1/32 (check_values S4), doubled by Holm for two conditions."""
+    table = rows([1] * 6, [0] * 6) + rows([1] * 6, [1] * 6, condition="dark")
+    p = {d.condition: d.p for d in differences(table, "learned", "analytic", stream(0, "test"))}
+    assert (p["usual"], p["dark"]) == (pytest.approx(2 / 32), 1.0)
+
+
+def test_a_condition_that_is_lost_beyond_doubt_is_named():
+    """Won on the whole, but not where it is dark: nobody should find that out on the robot."""
+    table = [
+        row
+        for name, (learned, analytic) in {
+            "a": (1, 0), "b": (1, 0), "c": (1, 0), "dark": (0, 1),
+        }.items()
+        for row in rows([learned] * 12, [analytic] * 12, condition=name)
+    ]  # fmt: skip
+    found = verdict(table)
+    assert found.ship == "cannot tell" and "loses under dark" in found.sentence
 
 
 def test_differences_favour_the_learned_model_above_zero():

@@ -133,10 +133,12 @@ def test_a_verdict_has_its_members(demo):
 
 
 def test_every_contender_is_judged_on_every_drive(demo):
-    """Five models and the matcher without colour, two drives."""
+    """Five models, the analytic one with half the columns, and the matcher without colour; two drives."""
     pairs = [(row["contender"], row["drive"]) for row in rows_of(demo)]
-    assert len(set(pairs)) == len(pairs) == 12
-    assert {contender for contender, _ in pairs} == {*MODELS, "matcher, colour hidden"}
+    assert len(set(pairs)) == len(pairs) == 14
+    searched = {name for name, _ in pairs if name.endswith(" column_step=2")}
+    assert len(searched) == 1
+    assert {name for name, _ in pairs} == {*MODELS, *searched, "matcher, colour hidden"}
 
 
 def test_the_opponent_was_chosen_by_validation(demo):

@@ -14,6 +14,7 @@ TRAINING = (
     "threads=1", "grid.headings=16", "grid.bearings_per_heading=4", "site.width_m=8", "site.depth_m=8",
     "train.sites=2", "train.drives=1", "train.rows=12", "train.stills=16", "train.validation_sites=1",
     "train.validation_steps=2", "train.strips=6", "train.decoys=12", "train.lengths=[3]",
+    "train.search=[{column_step: 2}]",
     *(f"train.{stage}.{key}" for stage in ("tuning", "matching", "filtering")
       for key in ("iterations=6", "validate_every=2", "patience=9")),
 )  # fmt: skip

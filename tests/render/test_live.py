@@ -118,6 +118,15 @@ def test_nobody_stands_in_unmapped_area():
     assert not at(3.1, 1.5)
 
 
+def test_a_room_open_to_unmapped_area_alone_is_not_outdoors():
+    """Nothing is drawn at its left side, and what lies there is unmapped; a smaller room is walled off."""
+    unmapped = (np.array([(-9, -9), (0, -9), (0, 12), (-9, 12)], float),)
+    three_sides = [[0, 0, 7, 0], [7, 0, 7, 3], [7, 3, 0, 3], [4, 0, 4, 3]]
+    _, at = live_of(walls(three_sides, unmapped=unmapped))
+    assert at(2, 1.4)
+    assert not at(5.5, 1.4)
+
+
 @pytest.mark.parametrize("state", [OPEN, UNKNOWN])
 def test_an_entrance_does_not_let_the_outside_in(state):
     """An L-shaped house whose yard, within the bounds, is larger than the house."""

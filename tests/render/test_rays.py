@@ -187,7 +187,7 @@ def test_walls_on_the_borders_of_the_grid_stop_every_ray():
 @given(
     seed=st.integers(0, 2**32 - 1),
     n=st.integers(1, 60),
-    cell_m=st.sampled_from([0.3, 1.0, 2.0, 7.0]),
+    cell_m=st.sampled_from([None, 0.3, 1.0, 2.0, 7.0]),
     snap_m=st.sampled_from([None, 0.5, 1.0]),
     max_range_m=st.sampled_from([2.5, np.inf]),
 )

@@ -4,6 +4,7 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+import shapely
 from invented import EMPTY, room, world_of
 
 from learnfilter.core.poses import between
@@ -15,7 +16,7 @@ STRIP = Strip(even_strip(-43.59375, 2.8125, 32), min_range_m=0.15, max_range_m=6
 
 def content(seed=1, family="offices", conditions=None, rows=12, **options):
     """Every byte a site and its drives hold."""
-    plan, drives = rehearse_site(seed, family, conditions or Conditions(), STRIP, rows, 2, **options)
+    plan, drives, _ = rehearse_site(seed, family, conditions or Conditions(), STRIP, rows, 2, **options)
     arrays = [a for d in drives for a in (d.time_s, d.odometry, d.depth_m, d.rgb, d.reference)]
     return plan.content_hash(), *(array.tobytes() for array in arrays)
 
@@ -34,7 +35,7 @@ def test_another_seed_index_or_family_gives_another_site(other):
 
 def test_two_drives_on_a_site_differ():
     """The site is one, the days are two."""
-    plan, (first, second) = rehearse_site(1, "aisles", Conditions(), STRIP, 12, 2)
+    plan, (first, second), _ = rehearse_site(1, "aisles", Conditions(), STRIP, 12, 2)
     assert first.site == second.site == plan.name
     assert first.name != second.name
     assert not np.array_equal(first.reference, second.reference)
@@ -42,17 +43,64 @@ def test_two_drives_on_a_site_differ():
 
 def test_conditions_leave_the_layout_alone():
     """Sites can be paired over conditions; unseen finishes change colours only."""
-    (usual, _), (changed, _) = (
-        rehearse_site(1, "hall", conditions, STRIP, 2, 1)
+    usual, changed = (
+        rehearse_site(1, "hall", conditions, STRIP, 2, 1).plan
         for conditions in (Conditions(), Conditions(finishes="unseen", plan_scale=1.1, people=4))
     )
     np.testing.assert_array_equal(usual.segments, changed.segments)
 
 
+@pytest.mark.parametrize(
+    ("asked", "expected"), [((12, 12), (18, 8)), ((20, 15.2), (30, 10.1)), ((40, 9), (40, 8))]
+)
+def test_an_unseen_layout_has_other_proportions(asked, expected):
+    """3/2 of the width, 2/3 of the depth, in whole decimetres from 8 to 40 m."""
+    plan = rehearse_site(1, "offices", replace(EMPTY, layout="unseen"), STRIP, 1, 0, *asked).plan
+    np.testing.assert_allclose(plan.bounds, (0, 0, *expected), atol=1e-9)  # sums of decimetres
+
+
+def test_an_unseen_layout_is_drawn_from_other_seeds():
+    """At a size that sites can have no wider and no less deep, the layout differs all the same."""
+    usual, unseen = (
+        rehearse_site(1, "offices", replace(EMPTY, layout=layout), STRIP, 1, 0, 40, 8).plan
+        for layout in ("usual", "unseen")
+    )
+    assert usual.bounds == unseen.bounds
+    assert not np.array_equal(usual.segments[:50], unseen.segments[:50])
+
+
+def test_an_unseen_family_stands_in_for_any_other():
+    """The same slanted walls as the family itself would have, but other ones for each name and index."""
+    sites = [
+        rehearse_site(1, family, replace(EMPTY, family="unseen"), STRIP, 1, 0, index=index).plan
+        for family in ("offices", "hall")
+        for index in range(2)
+    ]
+    for plan in sites:
+        dx, dy = (plan.segments[:, 2:] - plan.segments[:, :2]).T
+        slanted = (dx != 0) & (dy != 0)
+        np.testing.assert_allclose(abs(dy[slanted] / dx[slanted]), 4 / 3)
+        assert slanted.any()
+    assert len({plan.content_hash() for plan in sites}) == len(sites)
+    assert len({plan.name for plan in sites}) == len(sites)
+
+
+def test_every_drive_comes_with_its_world():
+    """The robot keeps its radius from all that stood there that day, and would not have on the other."""
+    _, drives, worlds = rehearse_site(1, "hall", Conditions(20.0), STRIP, 60, 2)
+    least = np.empty((2, 2))
+    for i, world in enumerate(worlds):
+        things = shapely.union_all(shapely.linestrings(world.obstacles.reshape(-1, 2, 2)))
+        for j, drive in enumerate(drives):
+            least[i, j] = shapely.distance(shapely.points(drive.reference[:, :2]), things).min()
+    assert np.diag(least).min() >= 0.25 - 1e-9  # rounding
+    assert max(least[0, 1], least[1, 0]) < 0.25
+
+
 def test_a_share_of_plans_names_no_finishes():
     """A fifth by default: 40 sites, four standard errors of a share of 0.2 are 0.25."""
     bare = [
-        not rehearse_site(5, "hall", EMPTY, STRIP, 1, 0, 8, 8, index=i)[0].has_finishes for i in range(40)
+        not rehearse_site(5, "hall", EMPTY, STRIP, 1, 0, 8, 8, index=i).plan.has_finishes for i in range(40)
     ]
     assert 0 < np.mean(bare) < 0.45
 
@@ -89,5 +137,5 @@ def test_a_parked_robot_measures_without_moving():
 
 def test_time_increases():
     """As drive tables demand."""
-    _, (drive,) = rehearse_site(3, "partitions", Conditions(parked_s=1.0), STRIP, 20, 1)
+    _, (drive,), _ = rehearse_site(3, "partitions", Conditions(parked_s=1.0), STRIP, 20, 1)
     assert np.diff(drive.time_s).min() > 0

@@ -36,6 +36,7 @@ def trainer(folder, seed=0):
     return Trainer(
         [ground],
         [ground],
+        [ground],
         FilterSettings(lengths=(2, 3), validate_steps=3),
         MatchingSettings(strips=6, decoys=10),
         seed,
@@ -66,7 +67,7 @@ def test_tuning_makes_a_blend_better_on_its_own_drives(tmp_path):
     (result,) = tuned.stages.values()
     untuned = make_blend("beam+colour", LAYOUT, FITS)
     held_out = trainer(tmp_path).held_out
-    assert result.best_score < validate(untuned, tuned.motion, held_out, 1e-4, 3).score
+    assert result.best_score < validate(untuned, tuned.motion, held_out, held_out, 1e-4, 3).score
     for name, exponent in tuned.model.log_exponent.items():
         assert float(exponent.detach()) < float(untuned.log_exponent[name].detach())
 
@@ -90,7 +91,7 @@ def test_validation_looks_at_nats_and_at_places():
     with torch.no_grad():
         blend.log_exponent["beam"].fill_(-30.0)
     ground = Ground(small_site(), (drive_on_small_site(5, seed=1),))
-    result = validate(blend, MotionModel(), [ground], 1e-4, 1)
+    result = validate(blend, MotionModel(), [ground], [ground], 1e-4, 1)
     assert result.score == pytest.approx(np.log(small_site().n_cells * 16), rel=1e-5)
     assert result.curves == {"located": 0.0}
     assert result.picture.sum() == pytest.approx(1, abs=1e-5)

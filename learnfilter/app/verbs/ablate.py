@@ -1,12 +1,14 @@
-"""Prove whether the learned model beats the analytic ones on sites it never saw.
+"""Prove whether the learned model beats the analytic ones, where it will be used.
 
-Every model of a training run filters the same drives from an unknown start. You get the located share
-(within 0.5 m and 15 degrees) and the nats of the true pose after 1 to 32 strips, paired differences with
-95 % intervals over sites, and one sentence: ship the learned model, ship the analytic one, or cannot tell.
+Every model of a training run filters the same drives from an unknown start. You get the located share and
+the nats of the true pose after 1 to 32 strips, paired differences with 95 % intervals over sites, whether
+each model's own confidence can be believed, and one sentence: ship the learned model, ship the analytic
+one, or cannot tell. Name the conditions your robot will meet: conditions=[as-trained,dim-light+crowd],
+or conditions=[all]; each is a file in configs/condition, or in condition/ of your --config-dir.
 On your own plan: site=file site.file=PATH, with simulated drives or recorded ones (drives=[a.parquet]).
 
 Example:
-  learnfilter ablate model=runs/train/cart condition=dim-light
+  learnfilter ablate model=runs/train/cart conditions=[as-trained,dim-light]
 """
 
 from __future__ import annotations
@@ -15,12 +17,12 @@ from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
-from learnfilter.app.grounds import build_lattices
-from learnfilter.app.judging import judge_models, watch
+from learnfilter.app.judging import judge_models, watch_first
 from learnfilter.app.models import LEARNED, settings_of, stored
 from learnfilter.app.pages import (
     DEPTH_ONLY,
     SIMULATED,
+    condition_table,
     forests,
     provenance,
     score_charts,
@@ -28,6 +30,7 @@ from learnfilter.app.pages import (
     settings_text,
     size_table,
     table_lines,
+    trust_table,
 )
 from learnfilter.app.runs import open_run
 from learnfilter.app.studying import study_subject
@@ -40,19 +43,16 @@ def run(settings: AblateConfig) -> dict[str, Any]:
     made_with = replace(
         settings_of(Path(settings.model)), runs=settings.runs
     )  # the cache is ours, not the trainer's
-    models = stored(Path(settings.model) / "models", build_lattices(made_with).layout)
-    study = settings.study
+    models = stored(Path(settings.model), made_with)
     subject = study_subject(
-        made_with, settings.site, settings.condition, study, settings.seed, settings.drives
+        made_with, settings.site, settings.conditions, settings.study, settings.seed, settings.drives
     )
     folder = open_run("ablate", settings.name or "default", settings)
-    found = judge_models(
-        models, subject.grounds, "as configured", folder.path, study.mark, settings.seed, study.hide_colour
-    )
-    plain = not subject.plans[0].has_finishes
-    cautions = ((DEPTH_ONLY,) if plain else ()) + (() if settings.drives else (SIMULATED,))
+    found = judge_models(models, subject, settings.study, folder.path, settings.seed)
     shown = [models[found.analytic], models[LEARNED]]
-    strip = subject.drives[0][0].strip
+    episodes = watch_first(shown, subject, 2)
+    plain = not episodes[0].plan.has_finishes
+    cautions = ((DEPTH_ONLY,) if plain else ()) + (() if settings.drives else (SIMULATED,))
     write_page(
         RunPage(
             title=folder.path.name,
@@ -60,11 +60,8 @@ def run(settings: AblateConfig) -> dict[str, Any]:
             headline=found.verdict.sentence,
             confidence=found.verdict.confidence,
             job=f"Compare the models of {settings.model} on {subject.title}.",
-            episodes=tuple(
-                watch(shown, ground, plan, strip)
-                for ground, plan in list(zip(subject.grounds, subject.plans, strict=True))[:2]
-            ),
-            tables=score_tables(found),
+            episodes=episodes,
+            tables=(*score_tables(found), *condition_table(found), trust_table(found)),
             forests=forests(found),
             charts=score_charts(found),
             facts=(size_table(models, found),),

@@ -18,11 +18,13 @@ from typing import Any
 
 from learnfilter.app.build import build_plan, check_invented
 from learnfilter.app.exporting import export_bundle
-from learnfilter.app.judging import Judgement, judge_models, watch
+from learnfilter.app.grounds import Place
+from learnfilter.app.judging import Judgement, judge_models, watch_first
 from learnfilter.app.models import LEARNED, Stored
 from learnfilter.app.pages import (
     DEPTH_ONLY,
     SIMULATED,
+    condition_table,
     forests,
     provenance,
     score_charts,
@@ -31,6 +33,7 @@ from learnfilter.app.pages import (
     size_table,
     table_lines,
     training_charts,
+    trust_table,
 )
 from learnfilter.app.replaying import draw, replay_bundle
 from learnfilter.app.runs import RunFolder, open_run
@@ -39,7 +42,7 @@ from learnfilter.app.training import train_models
 from learnfilter.app.verb_settings import DemoConfig, TrainConfig
 from learnfilter.drives.tables import iter_rows, write_drive
 from learnfilter.export.check import compare
-from learnfilter.plan import check_plan, write_plan
+from learnfilter.plan import FloorPlan, check_plan, write_plan
 from learnfilter.report import Column, RunPage, SiteMap, Table, draw_plan, write_page
 from learnfilter.runtime import load_bundle
 
@@ -56,16 +59,19 @@ def run(settings: DemoConfig) -> dict[str, Any]:
     made_with = _training_part(settings)
     models = train_models(made_with, folder.path)
     trained_s = time.monotonic() - clock
-    subject = study_subject(made_with, site, settings.condition, settings.study, settings.seed)
-    found = judge_models(
-        models, subject.grounds, "as configured", folder.path, settings.study.mark, settings.seed,
-        settings.study.hide_colour,
-    )  # fmt: skip
+    subject = study_subject(
+        made_with, site, {"as configured": settings.condition}, settings.study, settings.seed
+    )
+    found = judge_models(models, subject, settings.study, folder.path, settings.seed)
+    first = next(place for _, place in subject.places())
     shipped = models[LEARNED] if found.verdict.ship == "learned" else models[found.analytic]
-    bundle = export_bundle(made_with, shipped, subject.plans[0], folder.path / "bundle", found.summary())
+    bundle = export_bundle(made_with, shipped, first.plan, folder.path / "bundle", found.summary())
     bundle["runtime_tv"] = compare(folder.path / "bundle")
-    replayed = _replay(folder, subject)
-    write_page(_page(settings, folder, models, found, subject, bundle, replayed), folder.path / "report.html")
+    replayed = _replay(folder, first)
+    write_page(
+        _page(settings, folder, models, found, subject, first.plan, bundle, replayed),
+        folder.path / "report.html",
+    )
     results = {
         **found.summary(),
         "validation_nats": {n: m.facts["validation"] for n, m in models.items()},
@@ -87,9 +93,9 @@ def _training_part(settings: DemoConfig) -> TrainConfig:
     return TrainConfig(**{**fields, "site": replace(settings.site, file=None, level=None)})
 
 
-def _replay(folder: RunFolder, subject: Subject) -> dict[str, Any]:
+def _replay(folder: RunFolder, place: Place) -> dict[str, Any]:
     """Write the first drive as a table and run the bundle over it, as the robot would."""
-    plan, drive = subject.plans[0], subject.drives[0][0]
+    plan, drive = place.plan, place.drives[0]
     write_plan(plan, folder.path / "site.geojson")
     draw_plan(plan, folder.path / "site.png", findings=check_plan(plan))
     table = folder.path / "drive.parquet"
@@ -106,17 +112,12 @@ def _page(
     models: dict[str, Stored],
     found: Judgement,
     subject: Subject,
+    plan: FloorPlan,
     bundle: dict[str, Any],
     replayed: dict[str, Any],
 ) -> RunPage:
-    plan, strip = subject.plans[0], subject.drives[0][0].strip
     shown = [models[found.analytic], models[LEARNED]]
-    pairs = list(zip(subject.grounds, subject.plans, strict=True))
-    watched = (
-        [(ground, own, 0) for ground, own in pairs[:3]]
-        if len(pairs) > 1
-        else [(*pairs[0], n) for n in (0, 1)]
-    )
+    episodes = watch_first(shown, subject, 3) if subject.count > 1 else watch_first(shown, subject, 1, 2)
     at = replayed["locked_at_row"]
     handed = Table(
         "What goes to the robot",
@@ -137,9 +138,9 @@ def _page(
         headline=found.verdict.sentence,
         confidence=found.verdict.confidence,
         job=f"Train in invented sites, then judge on {subject.title}.",
-        episodes=tuple(watch(shown, ground, own, strip, number) for ground, own, number in watched),
+        episodes=episodes,
         maps=(SiteMap(f"Plan of {plan.name}", plan, check_plan(plan)),),
-        tables=score_tables(found),
+        tables=(*score_tables(found), *condition_table(found), trust_table(found)),
         forests=forests(found),
         charts=(*score_charts(found), *training_charts(models)),
         facts=(size_table(models, found), handed),

@@ -18,7 +18,6 @@ from typing import Any
 
 from learnfilter.app.build import build_plan
 from learnfilter.app.exporting import export_bundle
-from learnfilter.app.grounds import build_lattices
 from learnfilter.app.models import chosen, settings_of
 from learnfilter.app.runs import open_run
 from learnfilter.app.verb_settings import ExportConfig
@@ -30,7 +29,7 @@ def run(settings: ExportConfig) -> dict[str, Any]:
     """Do the verb; returns the summary."""
     source = Path(settings.model)
     made_with = replace(settings_of(source), runs=settings.runs)  # the cache is ours, not the trainer's
-    model = chosen(source, settings.contender, build_lattices(made_with).layout)
+    model = chosen(source, settings.contender, made_with)
     plan = build_plan(settings.site)
     figures = _figures(settings.ablation)
     folder = open_run("export", settings.name or Path(settings.site.file or "").stem, settings, replace=True)

@@ -18,7 +18,6 @@ from typing import Any
 import numpy as np
 
 from learnfilter.app.build import build_plan, build_strip
-from learnfilter.app.grounds import build_lattices
 from learnfilter.app.models import chosen, settings_of
 from learnfilter.app.runs import open_run
 from learnfilter.app.verb_settings import LabelConfig
@@ -31,8 +30,8 @@ from learnfilter.report import draw_plan
 def run(settings: LabelConfig) -> dict[str, Any]:
     """Do the verb; returns the summary."""
     made_with = settings_of(Path(settings.model))
-    lattices = build_lattices(made_with)
-    model = chosen(Path(settings.model), settings.contender, lattices.layout)
+    model = chosen(Path(settings.model), settings.contender, made_with)
+    lattices = model.lattices
     plan = build_plan(settings.site)
     drive = read_drive(Path(settings.drive), build_strip(made_with.strip), depth_kind=settings.depth_kind)
     folder = open_run("label", settings.name or Path(settings.drive).stem, settings, replace=True)

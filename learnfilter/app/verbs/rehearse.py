@@ -70,7 +70,7 @@ def _invent(settings: RehearseConfig) -> Maker:
             site.depth_m,
             index=index // len(site.families),
             robot_radius_m=settings.robot_radius_m,
-        )
+        )[:2]
 
     return make
 

@@ -31,7 +31,7 @@ def draw(sketch: Sketch, width: int, depth: int) -> None:
         above = below + corridor
         for lower, upper, front in ((bottom, below, below), (above, top, above)):
             for start, end in blocks:
-                _rooms(sketch, start, end, lower, upper, front)
+                row_of_rooms(sketch, start, end, lower, upper, front)
             if n_bands > 1:
                 sketch.wall((left, lower), (left, upper))
                 sketch.wall((right, lower), (right, upper))
@@ -40,7 +40,7 @@ def draw(sketch: Sketch, width: int, depth: int) -> None:
             sketch.wall((start, level), (end, level))
 
 
-def _rooms(sketch: Sketch, left: int, right: int, bottom: int, top: int, front: int) -> None:
+def row_of_rooms(sketch: Sketch, left: int, right: int, bottom: int, top: int, front: int) -> None:
     """A row of rooms with doors in the wall at height `front`, some with a door to the next room."""
     cuts = sketch.split(right - left, *ROOM_DM)
     for a, b in pairwise(cuts):

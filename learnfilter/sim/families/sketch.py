@@ -6,6 +6,7 @@ nothing rounds.  Doors are at least 815 mm wide (ADA 2010, 404.2.3), which in wh
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass, field
 from itertools import pairwise
 
@@ -89,16 +90,25 @@ class Sketch:
         at = self.between(JAMB_DM, length - JAMB_DM - width)
         return Opening(at, width, self.pick(*fillings, shares=shares))
 
-    def wall(self, start: tuple[int, int], end: tuple[int, int], *openings: Opening) -> None:
-        """A straight wall along an axis, cut by openings; one finish."""
-        finish = self.finish()
+    def wall(
+        self, start: tuple[int, int], end: tuple[int, int], *openings: Opening, finish: int | None = None
+    ) -> None:
+        """A straight wall, cut by openings; one finish, drawn where none is given.
+
+        It runs along an axis, or obliquely along (3, 4) or (4, 3) with openings at multiples of 5: there
+        too every length and every coordinate is whole.
+        """
+        finish = self.finish() if finish is None else finish
         (x0, y0), (x1, y1) = start, end
-        length = abs(x1 - x0) + abs(y1 - y0)
-        ux, uy = (x1 - x0) // length, (y1 - y0) // length
+        dx, dy = x1 - x0, y1 - y0
+        length = math.isqrt(dx * dx + dy * dy)
+
+        def at(along: int) -> tuple[int, int]:
+            return x0 + dx * along // length, y0 + dy * along // length
 
         def piece(a: int, b: int, kind: int, state: int, finish: int) -> None:
             if b > a:
-                self.segments.append((x0 + ux * a, y0 + uy * a, x0 + ux * b, y0 + uy * b))
+                self.segments.append((*at(a), *at(b)))
                 self.rows.append((kind, state, finish, self.features))
 
         done = 0
@@ -122,13 +132,25 @@ class Sketch:
             self.segments.append((*corner, *corners[(i + 1) % 4]))
             is_end = (i % 2 == 1) == along_x
             self.rows.append((SOLID, SHUT, finishes[is_end], self.features))
-        self.solids.append(np.array(corners) / 10)
+        self.solids.append(np.array(corners))
         self.features += 1
 
-    def shell(self, width: int, depth: int, longest: int, window_share: float = 0.0) -> None:
-        """The outer walls, in stretches no longer than `longest`, some with a window."""
+    def shell(
+        self,
+        width: int,
+        depth: int,
+        longest: int,
+        window_share: float = 0.0,
+        *,
+        sides: int = 4,
+        finish: int | None = None,
+    ) -> None:
+        """The outer walls, in stretches no longer than `longest`, some with a window.
+
+        The first so many of bottom, right, top and left; finishes as for `wall`.
+        """
         corners = [(0, 0), (width, 0), (width, depth), (0, depth)]
-        for i, (x0, y0) in enumerate(corners):
+        for i, (x0, y0) in enumerate(corners[:sides]):
             x1, y1 = corners[(i + 1) % 4]
             length = abs(x1 - x0) + abs(y1 - y0)
             cuts = [length * k // -(-length // longest) for k in range(-(-length // longest) + 1)]
@@ -136,7 +158,14 @@ class Sketch:
             for a, b in pairwise(cuts):
                 glazed = b - a >= 16 and self.rng.random() < window_share
                 windows = [Opening((b - a) // 4, (b - a) // 2, "window")] if glazed else []
-                self.wall((x0 + ux * a, y0 + uy * a), (x0 + ux * b, y0 + uy * b), *windows)
+                self.wall((x0 + ux * a, y0 + uy * a), (x0 + ux * b, y0 + uy * b), *windows, finish=finish)
+
+    def repeat_turned(self, width: int, depth: int) -> None:
+        """Draw all that was drawn once more, turned by half a turn about the middle of the site."""
+        self.segments += [(width - a, depth - b, width - c, depth - d) for a, b, c, d in self.segments]
+        self.rows += [(kind, state, finish, n + self.features) for kind, state, finish, n in self.rows]
+        self.solids += [np.array([width, depth]) - outline for outline in self.solids]
+        self.features *= 2
 
     def split(self, length: int, shortest: int, longest: int) -> list[int]:
         """Cut points 0 ... length of pieces in [shortest, longest], as far as the length allows."""
@@ -156,6 +185,6 @@ class Sketch:
             finish=finish if with_finishes else np.full(len(finish), NO_FINISH),
             feature=feature,
             finishes=self.palette if with_finishes else (),
-            solids=tuple(self.solids),
+            solids=tuple(outline / 10 for outline in self.solids),
             name=name,
         )

@@ -1,0 +1,324 @@
+# mypy: allow-untyped-defs
+# (numba infers the types of kernels; everything else here says its types)
+"""How likely a strip is at a pose, when the world and the sensor's faults are known.
+
+A cell of the oracle's lattice is wider than the sensor's noise, and where in its cell the robot
+stands moves all columns together.  So a pose's likelihood is the mean over its cell: each column is a
+mixture over the surfaces it can meet from there, ranges are linear in the offset from the cell's
+centre, and the integral is Laplace's (Tierney and Kadane 1986) about an offset found by reweighting.
+Taking columns for independent with a wider spread instead is tens of nats too sure at cell borders.
+"""
+
+from __future__ import annotations
+
+import math
+from typing import NamedTuple
+
+import numpy as np
+from numba import njit
+from numpy.typing import NDArray
+
+from learnfilter.ablation.known import Faults, Glow, Known
+from learnfilter.ablation.surroundings import NOTHING, Rings, cast_world, facing
+
+# Spread of the offset within a cell, in cells.  Smaller and the kernels of neighbouring cells leave
+# gaps between them, larger and they blur what is known: at 0.35 their sum is even to 18 %.
+WITHIN = 0.35
+# Rays a bearing from which surfaces are gathered, and how many to either side: an offset turns a column
+# by one bearing and a half at most, and what is narrower than a bearing must not be missed.
+RAYS, ASIDE = 4, 6
+SURFACES = 4  # kept a column; its last part is a pane of glass
+PANE = SURFACES
+# Chance that a column's footprint covers both surfaces where it can meet two.
+SPLIT = 0.25
+# Share of columns that the linear picture gets wrong (a corner within the cell): without it, one
+# such column can cost the true pose hundreds of nats.
+STRAY = 0.01
+# What the linear picture leaves of a column's range, metres.
+REST_M = 0.003
+ROUNDS = 3
+LEAST_COSINE = 0.02
+
+
+class _Place(NamedTuple):
+    """The lattice and the strip as numbers."""
+
+    first: int
+    per_heading: int
+    turn: float
+    cell: float
+    left: float
+    bottom: float
+    has_colour: bool
+    prior: NDArray[np.float64]  # [3] variance of x, y and heading within a cell
+
+
+class _Column(NamedTuple):
+    """What one column can meet, [k] each: weight, surface, ray it was found by, and what follows."""
+
+    weight: NDArray[np.float64]
+    surface: NDArray[np.int64]
+    ray: NDArray[np.int64]
+    reach: NDArray[np.float64]  # measured range to expect, inf for nothing
+    seen: NDArray[np.float64]  # chance that a reading comes back
+    gone: NDArray[np.float64]  # chance that none does, for out of reach too
+    loose: NDArray[np.float64]  # share by which brightness varies within the cell
+    mean: NDArray[np.float64]  # [k 3] linear colour
+
+
+class _Mixture(NamedTuple):
+    """Columns [w] by part [k]: share x N(error - slope . offset; noise), and what does not move."""
+
+    share: NDArray[np.float64]
+    error: NDArray[np.float64]
+    noise: NDArray[np.float64]
+    slope: NDArray[np.float64]  # [w k 3]
+    rest: NDArray[np.float64]  # [w]
+
+
+def strip_log_likelihood(known: Known, step: int, poses: NDArray[np.int64]) -> NDArray[np.float64]:
+    """Log-likelihood of a strip at some poses, mean over each pose's cell.
+
+    Args:
+        known: the world, the sensor and its strips.
+        step: which strip.
+        poses: [m 3] heading, row and column on the oracle's lattice.
+
+    Returns:
+        [m] nats, up to a constant a strip.
+    """
+    grid, layout = known.grid, known.layout
+    cells = np.zeros(grid.shape[1:], bool)
+    cells[poses[:, 1], poses[:, 2]] = True
+    within = WITHIN * np.array([grid.cell_m, grid.cell_m, grid.heading_step_rad])
+    place = _Place(
+        layout.first, layout.bearings_per_heading, grid.heading_step_rad, grid.cell_m, grid.left_m,
+        grid.bottom_m, known.rgb is not None, within**2,
+    )  # fmt: skip
+    rgb = known.rgb[step] if known.rgb is not None else np.zeros((layout.columns, 3))
+    out = np.empty(len(poses))
+    rings = cast_world(known, cells, step, RAYS)
+    used, albedo = np.flatnonzero(known.usable()[step]), known.things.albedo
+    strip = used, known.bearings_rad[used], known.depth_m[step, used], rgb[used]
+    _look(poses, *strip, place, rings, albedo, known.glow, known.faults, out)
+    return out
+
+
+@njit(cache=True)
+def _look(poses, used, bearing, depth, rgb, place, rings, albedo, glow, faults, out):
+    count, parts = len(used), SURFACES + 1
+    mixture = _Mixture(
+        np.zeros((count, parts)), np.zeros((count, parts)), np.ones((count, parts)),
+        np.zeros((count, parts, 3)), np.zeros(count),
+    )  # fmt: skip
+    column = _Column(
+        np.zeros(parts), np.zeros(parts, np.int64), np.zeros(parts, np.int64), np.zeros(parts),
+        np.zeros(parts), np.zeros(parts), np.zeros(parts), np.zeros((parts, 3)),
+    )  # fmt: skip
+    for m in range(len(poses)):
+        n = rings.index[poses[m, 1], poses[m, 2]]
+        for w in range(count):
+            ray = RAYS * (poses[m, 0] * place.per_heading + place.first + used[w]) % len(rings.angles)
+            angle = poses[m, 0] * place.turn + bearing[w]
+            _gather(rings, n, ray, place, column)
+            for k in range(parts):
+                if column.weight[k] > 0:
+                    _expect(rings, n, angle, k, w, place, albedo, glow, faults, column, mixture)
+            _judge(depth[w], rgb[w], w, place.has_colour, faults, column, mixture)
+        out[m] = _mean_over_cell(mixture, place.prior)
+
+
+@njit(cache=True)
+def _gather(rings, n, ray, place, column):
+    """Surfaces that a column can meet from anywhere in the cell, with the chance of each."""
+    column.weight[:] = 0.0
+    across = place.cell / (max(rings.range_m[n, ray], 0.2) * place.turn)
+    step = 2 * math.pi / len(rings.angles) / place.turn  # between rays, in headings
+    narrow = 0.5 * (step / WITHIN) ** 2 / (1 + across * across)
+    found, total = 0, 0.0
+    for i in range(2 * ASIDE + 1):
+        j = (i + 1) // 2 if i % 2 else -(i // 2)  # from the middle outwards
+        p = (ray + j) % len(rings.angles)
+        chance, s = math.exp(-narrow * j * j), rings.surface[n, p]
+        k = 0
+        while k < found and column.surface[k] != s:
+            k += 1
+        if k == found and found < SURFACES:
+            column.surface[k], column.ray[k] = s, p
+            found += 1
+        if k < found:
+            column.weight[k] += chance
+            total += chance
+    column.weight[:] /= total
+    if rings.pane_m[n, ray] < rings.range_m[n, ray]:
+        column.weight[PANE], column.surface[PANE], column.ray[PANE] = 1.0, rings.pane[n, ray], ray
+
+
+@njit(cache=True)
+def _expect(rings, n, angle, k, w, place, albedo, glow, faults, column, mixture):
+    """Range, spread, colour and chance to fail of the surface that part k of a column meets."""
+    s, p = column.surface[k], column.ray[k]
+    column.reach[k], column.seen[k], column.gone[k], column.loose[k] = np.inf, 0.0, 1.0, 0.0
+    if s == NOTHING:
+        column.mean[k] = glow.rgb * glow.beyond
+        return
+    ux, uy = math.cos(angle), math.sin(angle)
+    vx, vy = math.cos(rings.angles[p]), math.sin(rings.angles[p])
+    met = float(rings.pane_m[n, p] if k == PANE else rings.range_m[n, p])
+    nx, ny = facing(rings, n, vx, vy, met, s)
+    cosine = max(nx * ux + ny * uy, LEAST_COSINE)
+    d = met * (nx * vx + ny * vy) / cosine  # the surface goes on straight from where the ray met it
+    tangent = (uy * nx - ux * ny) / cosine
+    slope = mixture.slope[w, k]
+    slope[0], slope[1], slope[2] = -nx / cosine, -ny / cosine, d * tangent
+    swing = (slope * slope * place.prior).sum()
+    slope *= faults.range_scale
+    i = min(int(d / faults.range_step_m + 0.5), len(faults.spread_m) - 1)
+    j = int(cosine * (faults.spread_m.shape[1] - 1) + 0.5)
+    bend = d * place.prior[2] * (0.5 + tangent * tangent)
+    noise = faults.range_scale**2 * (faults.spread_m[i, j] ** 2 + bend * bend + REST_M * REST_M)
+    light = 0.2126 * albedo[s, 0] + 0.7152 * albedo[s, 1] + 0.0722 * albedo[s, 2]
+    column.reach[k], mixture.noise[w, k] = faults.range_scale * d, noise
+    column.seen[k] = 1 - (light * faults.missing_white[i, j] + (1 - light) * faults.missing_black[i, j])
+    beyond = (faults.max_range_m - column.reach[k]) / math.sqrt(2 * (noise + swing))
+    column.gone[k] = 1 - column.seen[k] * (0.5 + 0.5 * math.erf(beyond))
+    lamp = glow.lamp * cosine / max(d, glow.lamp_near_m) ** 2
+    bright = lamp + _ambient(
+        glow, rings.x[n] + d * ux - place.left, rings.y[n] + d * uy - place.bottom, place
+    )
+    column.loose[k] = 2 * lamp / bright * math.sqrt(swing) / max(d, glow.lamp_near_m)
+    column.mean[k] = glow.rgb * bright * albedo[s]
+
+
+@njit(cache=True)
+def _ambient(glow, x, y, place):
+    row = min(max(int(y / place.cell), 0), glow.ambient.shape[0] - 1)
+    return glow.ambient[row, min(max(int(x / place.cell), 0), glow.ambient.shape[1] - 1)]
+
+
+@njit(cache=True)
+def _judge(depth, rgb, w, has_colour, faults, column, mixture):
+    """Turn what a column can meet and what it measured into parts of a mixture."""
+    mixture.share[w] = 0.0
+    rest, wide = 0.0, faults.max_range_m - faults.min_range_m
+    none = 0.0
+    if column.weight[PANE] > 0:  # all of a column's rays fare alike in glass
+        passed = faults.glass_through + faults.glass_none
+        none, column.weight[PANE] = faults.glass_none / passed, 1 - passed
+        column.weight[:PANE] *= passed
+    for k in range(SURFACES + 1):
+        if column.weight[k] == 0.0:
+            continue
+        believed = column.weight[k] * (_shade(rgb, k, faults, column) if has_colour else 1.0)
+        comes = column.seen[k] if k == PANE else (1 - none) * column.seen[k]
+        if not has_colour:
+            comes *= 1 - faults.dropped
+        if depth != depth:
+            gone = 1 - (comes / column.seen[k] if column.seen[k] > 0 else 0.0) * (1 - column.gone[k])
+            rest += believed * ((1 - STRAY) * gone + 0.5 * STRAY)
+            continue
+        rest += believed * 0.5 * STRAY / wide
+        reach, believed = column.reach[k], believed * (1 - STRAY) * comes
+        if faults.min_range_m <= depth <= reach < np.inf:
+            rest += believed * faults.short / max(reach - faults.min_range_m, 0.05)
+        low, high = min(reach, column.reach[0]), max(reach, column.reach[0])
+        if k < PANE and low <= depth <= high < np.inf and high - low > 0.1:
+            rest += 2 * SPLIT * believed * faults.mixed / (high - low)
+        if reach < np.inf:
+            mixture.share[w, k] = believed * (1 - faults.short)
+            mixture.error[w, k] = depth - reach
+    mixture.rest[w] = rest
+
+
+@njit(cache=True)
+def _shade(rgb, k, faults, column):
+    """Density of a column's colour where its centre meets part k; the footprint may cover an edge."""
+    density, loose = 0.0, column.loose[k]
+    others = 0
+    for o in range(SURFACES):
+        if k != PANE and o != k and column.weight[o] > 0.02:
+            density += _gaussian_colour(rgb, column.mean[k], column.mean[o], 1 / 3, loose, faults)
+            others += 1
+    clean = _gaussian_colour(rgb, column.mean[k], column.mean[k], 0.0, loose, faults)
+    density = (1 - SPLIT) * clean + SPLIT * density / others if others else clean
+    return (1 - STRAY) * density + STRAY  # a stray colour has density 1 on the unit cube
+
+
+@njit(cache=True)
+def _gaussian_colour(rgb, mean, other, blend, loose, faults):
+    total, scale = 0.0, (2 * math.pi) ** 1.5
+    for c in range(3):
+        middle = min((1 - blend) * mean[c] + blend * other[c], 1.0)
+        noise = faults.colour_sd + faults.colour_sd_share * middle
+        spread = math.sqrt(noise * noise + (loose * middle) ** 2)
+        total += ((rgb[c] - middle) / spread) ** 2
+        scale *= spread
+    return math.exp(-0.5 * total) / scale
+
+
+@njit(cache=True)
+def _mean_over_cell(mixture, prior):
+    """Log of the mean, over offsets drawn with variances `prior` [3], of the product of all columns."""
+    offset, spread, grip, pull = np.zeros(3), np.diag(prior), np.empty((3, 3)), np.empty(3)
+    nats = 0.0
+    for turn in range(ROUNDS + 1):
+        # while the offset is being found its own doubt softens each column, in the last round no more
+        if turn == ROUNDS:
+            spread[:] = 0.0
+        grip[:] = 0.0
+        pull[:], nats = 0.0, 0.0
+        for i in range(3):
+            grip[i, i] = 1 / prior[i]
+        for w in range(len(mixture.rest)):
+            nats += _reweigh(mixture, w, offset, spread, grip, pull)
+        det = _invert(grip, spread)
+        if turn < ROUNDS:
+            for i in range(3):
+                offset[i] = spread[i, 0] * pull[0] + spread[i, 1] * pull[1] + spread[i, 2] * pull[2]
+    for i in range(3):
+        nats -= 0.5 * offset[i] * offset[i] / prior[i] + 0.5 * math.log(prior[i])
+    return nats - 0.5 * math.log(det)
+
+
+@njit(cache=True)
+def _reweigh(mixture, w, offset, spread, grip, pull):
+    """Log density of a column at an offset; adds to the normal equations what it says of the offset."""
+    parts = mixture.share.shape[1]
+    density, total = np.zeros(parts), mixture.rest[w] + 1e-300
+    variance = np.empty(parts)
+    for k in range(parts):
+        if mixture.share[w, k] > 0:
+            a, b, c = mixture.slope[w, k]
+            left = mixture.error[w, k] - a * offset[0] - b * offset[1] - c * offset[2]
+            variance[k] = (
+                mixture.noise[w, k] + a * a * spread[0, 0] + b * b * spread[1, 1] + c * c * spread[2, 2]
+            )
+            variance[k] += 2 * (a * b * spread[0, 1] + a * c * spread[0, 2] + b * c * spread[1, 2])
+            if left * left < 80 * variance[k]:
+                scale = mixture.share[w, k] / math.sqrt(2 * math.pi * variance[k])
+                density[k] = scale * math.exp(-0.5 * left * left / variance[k])
+                total += density[k]
+    for k in range(parts):
+        if density[k] > 1e-9 * total:
+            weight = density[k] / total / variance[k]
+            for i in range(3):
+                pulled = weight * mixture.slope[w, k, i]
+                pull[i] += pulled * mixture.error[w, k]
+                for j in range(3):
+                    grip[i, j] += pulled * mixture.slope[w, k, j]
+    return math.log(total)
+
+
+@njit(cache=True)
+def _invert(a, out):
+    """Inverse of a symmetric 3 x 3 matrix; returns its determinant."""
+    out[0, 0] = a[1, 1] * a[2, 2] - a[1, 2] * a[1, 2]
+    out[0, 1] = a[0, 2] * a[1, 2] - a[0, 1] * a[2, 2]
+    out[0, 2] = a[0, 1] * a[1, 2] - a[0, 2] * a[1, 1]
+    out[1, 1] = a[0, 0] * a[2, 2] - a[0, 2] * a[0, 2]
+    out[1, 2] = a[0, 1] * a[0, 2] - a[0, 0] * a[1, 2]
+    out[2, 2] = a[0, 0] * a[1, 1] - a[0, 1] * a[0, 1]
+    det = a[0, 0] * out[0, 0] + a[0, 1] * out[0, 1] + a[0, 2] * out[0, 2]
+    out[1, 0], out[2, 0], out[2, 1] = out[0, 1], out[0, 2], out[1, 2]
+    out /= det
+    return det
