@@ -18,8 +18,8 @@ import numpy as np
 from numba import njit
 from numpy.typing import NDArray
 
-from learnfilter.ablation.known import Faults, Glow, Known
-from learnfilter.ablation.surroundings import NOTHING, Rings, cast_world, facing
+from learnfilter.ablation.known import Known
+from learnfilter.ablation.surroundings import NOTHING, cast_world, facing
 
 # Spread of the offset within a cell, in cells.  Smaller and the kernels of neighbouring cells leave
 # gaps between them, larger and they blur what is known: at 0.35 their sum is even to 18 %.

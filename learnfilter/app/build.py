@@ -14,6 +14,9 @@ from learnfilter.sim import FAMILIES
 from learnfilter.sim.conditions import Conditions
 from learnfilter.sim.families import SIZES_M
 
+# Settings of a site that its file's reader takes.
+FILE_OPTIONS = ("level", "metres_per_pixel", "wall_grey", "free_grey", "left_m", "bottom_m")
+
 
 def build_strip(settings: StripConfig) -> Strip:
     """The sensor that `strip` describes."""
@@ -40,8 +43,8 @@ def build_plan(settings: SiteConfig) -> FloorPlan:
     """The plan that `site.file` names."""
     if settings.file is None:
         raise ConfigError("a floor plan is needed", place="site.file", expected="site.file=PATH")
-    options = {} if settings.level is None else {"level": settings.level}
-    return read_plan(settings.file, **options)
+    options = {key: getattr(settings, key) for key in FILE_OPTIONS}
+    return read_plan(settings.file, **{key: value for key, value in options.items() if value is not None})
 
 
 def check_invented(settings: SiteConfig) -> None:

@@ -42,10 +42,15 @@ class Common:
 
 @dataclass
 class SiteConfig:
-    """A plan in a file (`file`), or invented sites (`families`)."""
+    """A plan in a file (`file`), or invented sites (`families`); the keys from `level` on are the file's."""
 
     file: str | None
     level: str | None
+    metres_per_pixel: float | None
+    wall_grey: list[int] | None
+    free_grey: list[int] | None
+    left_m: float | None
+    bottom_m: float | None
     families: list[str]
     width_m: float
     depth_m: float

@@ -21,9 +21,9 @@ from learnfilter.filtering.rollout import lay_strips
 from learnfilter.observe.contract import Strips
 from learnfilter.plan.floorplan import FloorPlan
 from learnfilter.render.site import Site
+from learnfilter.sim import drawn_family, fold_of
 from learnfilter.sim.conditions import Conditions
 from learnfilter.sim.driver import free_poses
-from learnfilter.sim import drawn_family, fold_of
 from learnfilter.sim.rehearse import rehearse, rehearse_site
 from learnfilter.sim.sensor import sense
 from learnfilter.sim.world import World, build_world

@@ -89,6 +89,7 @@ class RecipeConfig:
     tuning: StageConfig
     matching: StageConfig
     filtering: StageConfig
+    recorded: StageConfig
 
     def __post_init__(self) -> None:
         for key in ("sites", "drives", "validation_sites", "validation_steps", "strips"):
@@ -108,16 +109,16 @@ class RecipeConfig:
 
 @dataclass
 class BlocksConfig:
-    """Which rows of recorded drives are judged: blocks of `rows`, from block `first` on, every `every`-th."""
+    """Which rows of recorded drives are used: blocks of `rows`, from block `first` on, every `every`-th."""
 
     rows: int
     first: int
     every: int
 
     def __post_init__(self) -> None:
-        hold("study.blocks.rows", self.rows >= 1, "at least 1", self.rows)
-        hold("study.blocks.first", self.first >= 0, "at least 0", self.first)
-        hold("study.blocks.every", self.every >= 1, "at least 1", self.every)
+        hold("blocks.rows", self.rows >= 1, "at least 1", self.rows)
+        hold("blocks.first", self.first >= 0, "at least 0", self.first)
+        hold("blocks.every", self.every >= 1, "at least 1", self.every)
 
 
 @dataclass
@@ -133,7 +134,6 @@ class StudyConfig:
     within_deg: float
     hide_colour: bool
     oracle: bool
-    blocks: BlocksConfig | None
 
     def __post_init__(self) -> None:
         for key in ("sites", "drives"):

@@ -14,7 +14,6 @@ from learnfilter.app.lattices import Lattices, build_lattices
 from learnfilter.app.recipes import BlocksConfig, StudyConfig
 from learnfilter.app.verb_settings import TrainConfig
 from learnfilter.core.errors import DriveError
-from learnfilter.drives.drive import Drive
 from learnfilter.drives.tables import read_drive
 from learnfilter.plan import FloorPlan
 from learnfilter.sim.conditions import Conditions
@@ -64,6 +63,7 @@ def study_subject(
     study: StudyConfig,
     seed: int,
     recorded: Sequence[str] = (),
+    blocks: BlocksConfig | None = None,
 ) -> Subject:
     """Say what models are judged on.
 
@@ -74,6 +74,7 @@ def study_subject(
         study: how much.
         seed: of what is invented.
         recorded: drive tables on `site.file`.
+        blocks: which rows of them are judged, each as a start; None for whole drives.
 
     Raises:
         DriveError: a recorded drive has another number of columns than the models' sensor.
@@ -84,7 +85,7 @@ def study_subject(
     plan, cache = build_plan(site), Path(settings.runs) / "cache"
     if recorded:
         hold("study.oracle", not study.oracle, "false: nobody knows all of a recorded drive", study.oracle)
-        place = _recorded(settings, plan, study.blocks, recorded)
+        place = recorded_place(settings, plan, recorded, blocks, every_start=True)
         title = f"{len(place.drives)} recorded drives on {plan.name}"
         return Subject(lambda: iter([(AS_RECORDED, place)]), 1, title, cache)
     strip, radius_m = build_strip(settings.strip), build_lattices(settings).robot_radius_m
@@ -116,10 +117,25 @@ def _invented(
     return Subject(places, len(named) * study.sites, title)
 
 
-def _recorded(
-    settings: TrainConfig, plan: FloorPlan, blocks: BlocksConfig | None, paths: Sequence[str]
+def recorded_place(
+    settings: TrainConfig,
+    plan: FloorPlan,
+    paths: Sequence[str],
+    blocks: BlocksConfig | None,
+    every_start: bool,
 ) -> Place:
-    """Recorded drives, whole or cut to every start that the blocks allow."""
+    """Recorded drives, whole or cut to blocks.
+
+    Args:
+        settings: of the models' training run.
+        plan: where they were driven.
+        paths: drive tables.
+        blocks: which rows are used.
+        every_start: whether each row of a block begins a drive of its own, to the block's end.
+
+    Raises:
+        DriveError: a drive has another number of columns than the models' sensor, or no row is used.
+    """
     strip = build_strip(settings.strip)
     drives, units = [], []
     for path in paths:
@@ -129,20 +145,20 @@ def _recorded(
                 "other sensor than the models'", file=whole.name,
                 expected=f"{strip.columns} columns", got=whole.strip.columns,
             )  # fmt: skip
-        for start, end in _starts(whole, blocks):
+        for start, end in _stretches(len(whole), blocks, every_start):
             drives.append(whole.part(start, end))
             units.append(f"{whole.name}, to row {end}")
     if not drives:
-        raise DriveError("no row lies in the blocks", place="study.blocks", got=blocks)
+        raise DriveError("no row lies in the blocks", place="blocks", got=blocks)
     return Place(plan, tuple(drives), units=tuple(units))
 
 
-def _starts(drive: Drive, blocks: BlocksConfig | None) -> Iterator[tuple[int, int]]:
-    """First row and end of every stretch that is judged."""
+def _stretches(rows: int, blocks: BlocksConfig | None, every_start: bool) -> Iterator[tuple[int, int]]:
+    """First row and end of every stretch that is used."""
     if blocks is None:
-        yield 0, len(drive)
+        yield 0, rows
         return
-    for block in range(blocks.first, -(-len(drive) // blocks.rows), blocks.every):
-        end = min(len(drive), (block + 1) * blocks.rows)
-        for start in range(block * blocks.rows, end):
+    for block in range(blocks.first, -(-rows // blocks.rows), blocks.every):
+        begin, end = block * blocks.rows, min(rows, (block + 1) * blocks.rows)
+        for start in range(begin, end if every_start else begin + 1):
             yield start, end

@@ -101,7 +101,8 @@ def training_material(settings: TrainConfig) -> Material:
     return Material(made[0], made[1], lay_one)
 
 
-def _stage(name: str, settings: StageConfig) -> StageSettings:
+def stage_settings(name: str, settings: StageConfig) -> StageSettings:
+    """A stage under the name that its checkpoints get."""
     return StageSettings(name=name, **asdict(settings))
 
 
@@ -162,14 +163,14 @@ def train_models(settings: TrainConfig, folder: Path) -> dict[str, Stored]:
 
         def trainer_on(grounds: Sequence[Ground], validation: Sequence[Ground]) -> Trainer:
             return Trainer(
-                grounds, validation, held_out, _filter_settings(settings),
+                grounds, validation, held_out, filter_settings(settings),
                 MatchingSettings(recipe.strips, recipe.decoys), settings.seed, folder / "checkpoints",
                 board, tick,
             )  # fmt: skip
 
         trainer, tuned = trainer_on(train, held_out), {}
         for kind in blend_kinds(fits.colour is not None):
-            stage = _stage(f"tuning-{kind}", recipe.tuning)
+            stage = stage_settings(f"tuning-{kind}", recipe.tuning)
             tuned[kind] = keep(
                 kind, trainer.tune_blend(kind, fits, lattices.layout, motion, stage), lattices, {}
             )
@@ -183,13 +184,14 @@ def train_models(settings: TrainConfig, folder: Path) -> dict[str, Stored]:
         )
         learned = trainer.train_matcher(
             _birth(parent.model, fits, settings), shape, lattices.layout, parent.motion.settings(),
-            _stage("matching", recipe.matching), _stage("filtering", recipe.filtering),
+            stage_settings("matching", recipe.matching), stage_settings("filtering", recipe.filtering),
         )  # fmt: skip
         keep(LEARNED, learned, lattices, {})
     return models
 
 
-def _filter_settings(settings: TrainConfig) -> FilterSettings:
+def filter_settings(settings: TrainConfig) -> FilterSettings:
+    """How drives are shown to a filter in training."""
     recipe = settings.train
     return FilterSettings(
         tuple(recipe.lengths), recipe.every_step, settings.motion.floor, recipe.hide_colour,
@@ -217,7 +219,7 @@ def _search(
         train, held_out = material.grounds(lattices, stills=False)
         fits = fit_analytic(train, settings.strip.max_range_m, stream(settings.seed, "fit"))
         name = f"{kind} {','.join(f'{key}={value}' for key, value in grid.items())}"
-        stage = _stage(f"tuning-{name}", settings.train.tuning)
+        stage = stage_settings(f"tuning-{name}", settings.train.tuning)
         trained = trainer_on(train, held_out).tune_blend(kind, fits, lattices.layout, motion, stage)
         (result,) = trained.stages.values()
         if result.best_score < best:

@@ -14,7 +14,7 @@ from learnfilter.app.config import (
     StripConfig,
     hold,
 )
-from learnfilter.app.recipes import ObserveConfig, RecipeConfig, StudyConfig
+from learnfilter.app.recipes import BlocksConfig, ObserveConfig, RecipeConfig, StudyConfig
 
 
 @dataclass
@@ -57,6 +57,16 @@ class TrainConfig(Common):
     condition: ConditionConfig
     observe: ObserveConfig
     train: RecipeConfig
+    start: str | None
+    drives: list[str]
+    blocks: BlocksConfig | None
+
+    def __post_init__(self) -> None:
+        super().__post_init__()
+        recorded = self.start is not None
+        hold("drives", bool(self.drives) == recorded, "recorded drive tables, with `start` only", self.drives)
+        on_plan = not recorded or self.site.file is not None
+        hold("site.file", on_plan, "the plan on which `drives` were recorded", self.site.file)
 
 
 @dataclass
@@ -68,6 +78,7 @@ class AblateConfig(Common):
     conditions: dict[str, ConditionConfig]
     study: StudyConfig
     drives: list[str]
+    blocks: BlocksConfig | None
 
     def __post_init__(self) -> None:
         super().__post_init__()

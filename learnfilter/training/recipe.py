@@ -25,7 +25,9 @@ from learnfilter.training.shake import ShakeSettings, shake
 from learnfilter.training.through_filter import filter_loss, step_losses
 from learnfilter.training.validation import validate
 
+NO_SHAKING = ShakeSettings()
 Tick = Callable[[int, int, str], None]
+DRIVES_AT_ONCE = 4  # of one site in an iteration; recorded drives may be many
 
 
 @dataclass(frozen=True)
@@ -47,7 +49,7 @@ class FilterSettings:
     floor: float = 1e-4
     hide_colour: float = 0.2
     validate_steps: int = 8
-    shake: ShakeSettings = ShakeSettings()
+    shake: ShakeSettings = NO_SHAKING
 
 
 @dataclass(frozen=True)
@@ -118,6 +120,10 @@ class Trainer:
         stages[filtering.name] = self._filter_stage(model, moves, filtering, own.hide_colour, own.shake)
         return Trained(model, moves, stages)
 
+    def go_on(self, model: ObservationModel, motion: MotionModel, stage: StageSettings) -> Trained:
+        """Train a model further through the filter."""
+        return Trained(model, motion, {stage.name: self._filter_stage(model, motion, stage)})
+
     def _matching_stage(self, model: Matcher, motion: MotionModel, stage: StageSettings) -> StageResult:
         def loss_at(iteration: int) -> Tensor:
             rng = stream(self.seed, stage.name, iteration)
@@ -139,13 +145,14 @@ class Trainer:
         motion: MotionModel,
         stage: StageSettings,
         hide_colour: float = 0.0,
-        shaken: ShakeSettings = ShakeSettings(),  # noqa: B008 - immutable
+        shaken: ShakeSettings = NO_SHAKING,
     ) -> StageResult:
         def loss_at(iteration: int) -> Tensor:
             rng = stream(self.seed, stage.name, iteration)
             ground = self.train[int(rng.integers(len(self.train)))]
             length = int(rng.choice(self.filtering.lengths))
-            odometry, strips, cell, heading = stretch(ground.courses, length, rng)
+            few = rng.permutation(len(ground.courses))[:DRIVES_AT_ONCE]
+            odometry, strips, cell, heading = stretch([ground.courses[k] for k in few], length, rng)
             if rng.random() < hide_colour:
                 strips = strips.without_colour()
             strips = shake(strips, shaken, odometry.shape[1], rng)

@@ -1,4 +1,4 @@
-"""Strips as a worse sensor or another light would have given them: caution that training alone would not learn.
+"""Strips as a worse sensor or another light would have given them: caution that sites alone do not teach.
 
 Sites and drives are made up once and light, range and faults vary little within them, so a model learns to
 trust each as far as it was right there.  Shaken strips cost nothing to make and are wrong in ways that a

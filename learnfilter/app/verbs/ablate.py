@@ -45,8 +45,9 @@ def run(settings: AblateConfig) -> dict[str, Any]:
     )  # the cache is ours, not the trainer's
     models = stored(Path(settings.model), made_with)
     subject = study_subject(
-        made_with, settings.site, settings.conditions, settings.study, settings.seed, settings.drives
-    )
+        made_with, settings.site, settings.conditions, settings.study, settings.seed, settings.drives,
+        settings.blocks,
+    )  # fmt: skip
     folder = open_run("ablate", settings.name or "default", settings)
     found = judge_models(models, subject, settings.study, folder.path, settings.seed)
     shown = [models[found.analytic], models[LEARNED]]

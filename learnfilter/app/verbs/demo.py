@@ -16,7 +16,7 @@ from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
-from learnfilter.app.build import build_plan, check_invented
+from learnfilter.app.build import FILE_OPTIONS, build_plan, check_invented
 from learnfilter.app.exporting import export_bundle
 from learnfilter.app.grounds import Place
 from learnfilter.app.judging import Judgement, judge_models, watch_first
@@ -90,7 +90,7 @@ def run(settings: DemoConfig) -> dict[str, Any]:
 def _training_part(settings: DemoConfig) -> TrainConfig:
     """The settings a training run would have: invented sites, whatever is judged on."""
     fields = {key: getattr(settings, key) for key in TrainConfig.__dataclass_fields__}
-    return TrainConfig(**{**fields, "site": replace(settings.site, file=None, level=None)})
+    return TrainConfig(**{**fields, "site": replace(settings.site, file=None, **dict.fromkeys(FILE_OPTIONS))})
 
 
 def _replay(folder: RunFolder, place: Place) -> dict[str, Any]:

@@ -4,7 +4,8 @@ Invents sites (`site.families`) under `condition`, drives on them with your `str
 the analytic models through the filter; trains the matcher, born from the best of them, on single strips
 (`train.matching`) and through the filter (`train.filtering`). The weights that do best on held-out sites
 are kept. Watch it: tensorboard --logdir runs/train. A killed run is taken up again by the same command
-and ends with the same weights.
+and ends with the same weights. With start=RUN, site.file=PLAN and drives=[...] all models of that run are
+tuned through the filter on your recorded drives (`train.recorded`); judge them on rows they have not seen.
 
 Example:
   learnfilter train name=cart strip=depth-colour-90 seed=1
@@ -20,15 +21,21 @@ from learnfilter.app.models import LEARNED
 from learnfilter.app.pages import provenance, settings_text, training_charts
 from learnfilter.app.runs import open_run
 from learnfilter.app.training import train_models
+from learnfilter.app.tuning import as_started, tune_models
 from learnfilter.app.verb_settings import TrainConfig
 from learnfilter.report import Column, RunPage, Table, write_page
 
 
 def run(settings: TrainConfig) -> dict[str, Any]:
     """Do the verb; returns the summary."""
-    check_invented(settings.site)
+    if settings.start is None:
+        check_invented(settings.site)
+    else:
+        settings = as_started(settings, Path(settings.start))
     folder = open_run("train", settings.name or "default", settings)
-    models = train_models(settings, folder.path)
+    models = (
+        train_models(settings, folder.path) if settings.start is None else tune_models(settings, folder.path)
+    )
     validation = {name: model.facts["validation"] for name, model in models.items()}
     write_page(
         RunPage(

@@ -1,0 +1,58 @@
+"""Go on from a training run: tune all of its models on recorded drives."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from pathlib import Path
+
+from learnfilter.app.board import Board
+from learnfilter.app.build import build_plan
+from learnfilter.app.lattices import Lattices
+from learnfilter.app.models import Stored, settings_of, store, stored
+from learnfilter.app.progress import progress
+from learnfilter.app.studying import recorded_place
+from learnfilter.app.training import config_hash, filter_settings, stage_settings
+from learnfilter.app.verb_settings import TrainConfig
+from learnfilter.filtering.course import Ground
+from learnfilter.training.recipe import MatchingSettings, Trainer
+
+
+def as_started(settings: TrainConfig, start: Path) -> TrainConfig:
+    """The settings with sensor, lattice, motion and model of the run that is gone on from."""
+    made_with = settings_of(start)
+    kept = {key: getattr(made_with, key) for key in ("strip", "grid", "motion", "observe", "condition")}
+    return replace(settings, **kept)
+
+
+def tune_models(settings: TrainConfig, folder: Path) -> dict[str, Stored]:
+    """Tune and store all models of the run that `start` names.
+
+    The weights that do best on the same drives are kept, so only other drives can judge them.
+
+    Args:
+        settings: of the verb, see `as_started`.
+        folder: of the run.
+    """
+    assert settings.start is not None
+    models, recipe = stored(Path(settings.start), settings), settings.train
+    place = recorded_place(settings, build_plan(settings.site), settings.drives, settings.blocks, False)
+    cache, tuned = Path(settings.runs) / "cache", {}
+    common = next(iter(models.values())).lattices
+
+    def on(lattices: Lattices) -> list[Ground]:
+        return [lattices.ground(lattices.render(place.plan, cache), place.drives)]
+
+    scored = on(common)
+    with Board(folder / "events", scored[0].site) as board, progress("tuning") as tick:
+        for name, model in models.items():
+            laid = on(model.lattices)
+            trainer = Trainer(
+                laid, laid, scored, filter_settings(settings), MatchingSettings(), settings.seed,
+                folder / "checkpoints", board, tick,
+            )  # fmt: skip
+            stage = stage_settings(f"recorded-{name}", recipe.recorded)
+            trained = trainer.go_on(model.model, model.motion, stage)
+            facts = {key: model.facts[key] for key in ("floor", "grid", "parameters")}
+            facts |= {"seed": settings.seed, "config": config_hash(settings)}
+            tuned[name] = store(folder / "models", name, trained, model.lattices, facts)
+    return tuned
