@@ -14,6 +14,8 @@ from numpy.typing import NDArray
 from learnfilter.core.grid import PoseGrid
 from learnfilter.core.strip import RingLayout
 
+FINER = 4  # cells and heading bins of the oracle to one of the common lattice, on each axis
+
 
 class Things(NamedTuple):
     """What rays meet.

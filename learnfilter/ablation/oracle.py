@@ -7,7 +7,7 @@ the pose nor a single draw of noise, and filters on a lattice FINER times finer 
 Its belief is summed to the common cells before it is scored.  Share of the gap closed =
 (learned - best analytic) / (oracle - best analytic).
 
-The belief is a list of poses that matter: after one strip those are some thousands of millions.
+The belief is a list of poses that matter: a few hundred of millions after one strip.
 """
 
 from __future__ import annotations
@@ -21,8 +21,9 @@ import numpy as np
 import torch
 from numba import njit
 from numpy.typing import NDArray
+from scipy import ndimage
 
-from learnfilter.ablation.known import Known
+from learnfilter.ablation.known import FINER, Known
 from learnfilter.ablation.sensing import strip_log_likelihood
 from learnfilter.ablation.surroundings import cast_world, rough_scores
 from learnfilter.core.errors import ImpossibleEvidence
@@ -32,7 +33,6 @@ from learnfilter.core.seeds import stream
 from learnfilter.filtering.motion import shift_weights
 from learnfilter.filtering.trace import Trace
 
-FINER = 4
 # Poses this many nats of the rough score below the best are not looked at closely.
 SCREEN_NATS = 60.0
 # Poses with a smaller share of the heaviest one's mass are dropped.
@@ -60,12 +60,8 @@ class Common(NamedTuple):
 
 def common_lattice(grid: PoseGrid, live: NDArray[np.bool_]) -> Common:
     """A lattice with its live cells [r c]."""
-    cells = np.argwhere(live)
-    stands_for = np.arange(live.size).reshape(live.shape)
-    for row, column in np.argwhere(~live):
-        r, c = cells[np.argmin(((cells - [row, column]) ** 2).sum(axis=1))]
-        stands_for[row, column] = r * grid.columns + c
-    return Common(grid, stands_for)
+    row, column = ndimage.distance_transform_edt(~live, return_distances=False, return_indices=True)
+    return Common(grid, row.astype(np.int64) * grid.columns + column)
 
 
 def follow(
@@ -92,8 +88,9 @@ def follow(
         mode = modes(belief, grid)[0]
         true = (heading[step], *divmod(cell[step], grid.columns))
         log_truth = np.log(max(belief[true], 1e-30))
-        rank = credible_rank(belief, true, ranks)
-        columns.append((mode.pose, mode.mass, log_truth, rank, entropy(belief), took))
+        columns.append(
+            (mode.pose, mode.mass, log_truth, credible_rank(belief, true, ranks), entropy(belief), took)
+        )
         clock = time.perf_counter()
     estimate, mass, log_truth, rank, nats, seconds = (np.array(c) for c in zip(*columns, strict=True))
     return Trace(estimate, mass, log_truth, rank, nats, float(seconds.mean()), None)
@@ -135,7 +132,7 @@ def _begin(known: Known) -> Belief:
     """Poses that the first strip does not rule out, as likely as the robot's start is."""
     rings = cast_world(known, _leaning(known.start > 0, known.lean), 0)
     rough = rough_scores(known, rings, 0)
-    row, column = np.argwhere(rings.index >= 0).T
+    row, column = np.argwhere(rings.number >= 0).T
     headings = np.arange(len(known.lean))[:, None]
     rows, columns = row - known.lean[:, :1], column - known.lean[:, 1:]
     start = known.start[rows.clip(0, known.start.shape[0] - 1), columns.clip(0, known.start.shape[1] - 1)]

@@ -4,9 +4,11 @@
 
 A cell of the oracle's lattice is wider than the sensor's noise, and where in its cell the robot
 stands moves all columns together.  So a pose's likelihood is the mean over its cell: each column is a
-mixture over the surfaces it can meet from there, ranges are linear in the offset from the cell's
-centre, and the integral is Laplace's (Tierney and Kadane 1986) about an offset found by reweighting.
-Taking columns for independent with a wider spread instead is tens of nats too sure at cell borders.
+mixture over the surfaces it can meet from there, and offset.py integrates.  Taking columns for
+independent with a wider spread instead is tens of nats too sure at cell borders.
+
+On 40 unseen sites of 12 x 12 m mean nats after 1, 2, 4 and 8 strips were .39 .43 .60 .37 with columns
+as they are, .38 .39 .57 .38 at exponent 0.8 and .38 .35 .55 .38 at 0.6: no exponent is needed.
 """
 
 from __future__ import annotations
@@ -19,6 +21,7 @@ from numba import njit
 from numpy.typing import NDArray
 
 from learnfilter.ablation.known import Known
+from learnfilter.ablation.offset import Mixture, mean_over_cell
 from learnfilter.ablation.surroundings import NOTHING, cast_world, facing
 
 # Spread of the offset within a cell, in cells.  Smaller and the kernels of neighbouring cells leave
@@ -31,12 +34,10 @@ SURFACES = 4  # kept a column; its last part is a pane of glass
 PANE = SURFACES
 # Chance that a column's footprint covers both surfaces where it can meet two.
 SPLIT = 0.25
-# Share of columns that the linear picture gets wrong (a corner within the cell): without it, one
-# such column can cost the true pose hundreds of nats.
+# Share of columns that meet what was not gathered (a corner within the cell): without it, one such
+# column can cost the true pose hundreds of nats.
 STRAY = 0.01
-# What the linear picture leaves of a column's range, metres.
-REST_M = 0.003
-ROUNDS = 3
+BAND = 16  # rows whose rings are held at once: a large site's would fill the memory
 LEAST_COSINE = 0.02
 
 
@@ -61,19 +62,9 @@ class _Column(NamedTuple):
     ray: NDArray[np.int64]
     reach: NDArray[np.float64]  # measured range to expect, inf for nothing
     seen: NDArray[np.float64]  # chance that a reading comes back
-    gone: NDArray[np.float64]  # chance that none does, for out of reach too
+    gone: NDArray[np.float64]  # chance that none does, beyond reach included
     loose: NDArray[np.float64]  # share by which brightness varies within the cell
     mean: NDArray[np.float64]  # [k 3] linear colour
-
-
-class _Mixture(NamedTuple):
-    """Columns [w] by part [k]: share x N(error - slope . offset; noise), and what does not move."""
-
-    share: NDArray[np.float64]
-    error: NDArray[np.float64]
-    noise: NDArray[np.float64]
-    slope: NDArray[np.float64]  # [w k 3]
-    rest: NDArray[np.float64]  # [w]
 
 
 def strip_log_likelihood(known: Known, step: int, poses: NDArray[np.int64]) -> NDArray[np.float64]:
@@ -88,44 +79,50 @@ def strip_log_likelihood(known: Known, step: int, poses: NDArray[np.int64]) -> N
         [m] nats, up to a constant a strip.
     """
     grid, layout = known.grid, known.layout
-    cells = np.zeros(grid.shape[1:], bool)
-    cells[poses[:, 1], poses[:, 2]] = True
     within = WITHIN * np.array([grid.cell_m, grid.cell_m, grid.heading_step_rad])
     place = _Place(
         layout.first, layout.bearings_per_heading, grid.heading_step_rad, grid.cell_m, grid.left_m,
         grid.bottom_m, known.rgb is not None, within**2,
     )  # fmt: skip
     rgb = known.rgb[step] if known.rgb is not None else np.zeros((layout.columns, 3))
-    out = np.empty(len(poses))
-    rings = cast_world(known, cells, step, RAYS)
-    used, albedo = np.flatnonzero(known.usable()[step]), known.things.albedo
+    used = np.flatnonzero(known.usable()[step])
     strip = used, known.bearings_rad[used], known.depth_m[step, used], rgb[used]
-    _look(poses, *strip, place, rings, albedo, known.glow, known.faults, out)
+    out = np.empty(len(poses))
+    for band in np.unique(poses[:, 1] // BAND):
+        among = poses[:, 1] // BAND == band
+        cells = np.zeros(grid.shape[1:], bool)
+        cells[tuple(poses[among, 1:].T)] = True
+        rings = cast_world(known, cells, step, RAYS)
+        out[among] = _look(poses[among], *strip, place, rings, known.things.albedo, known.glow, known.faults)
     return out
 
 
 @njit(cache=True)
-def _look(poses, used, bearing, depth, rgb, place, rings, albedo, glow, faults, out):
+def _look(poses, used, bearing, depth, rgb, place, rings, albedo, glow, faults):
+    out = np.empty(len(poses))
     count, parts = len(used), SURFACES + 1
-    mixture = _Mixture(
-        np.zeros((count, parts)), np.zeros((count, parts)), np.ones((count, parts)),
-        np.zeros((count, parts, 3)), np.zeros(count),
+    mixture = Mixture(
+        depth / faults.range_scale, np.zeros(count), np.zeros(count), np.zeros((count, parts)),
+        np.ones((count, parts)), np.zeros((count, parts, 3)), np.zeros((count, parts), np.bool_),
+        np.zeros(count),
     )  # fmt: skip
     column = _Column(
         np.zeros(parts), np.zeros(parts, np.int64), np.zeros(parts, np.int64), np.zeros(parts),
         np.zeros(parts), np.zeros(parts), np.zeros(parts), np.zeros((parts, 3)),
     )  # fmt: skip
     for m in range(len(poses)):
-        n = rings.index[poses[m, 1], poses[m, 2]]
+        n = rings.number[poses[m, 1], poses[m, 2]]
         for w in range(count):
             ray = RAYS * (poses[m, 0] * place.per_heading + place.first + used[w]) % len(rings.angles)
             angle = poses[m, 0] * place.turn + bearing[w]
+            mixture.ux[w], mixture.uy[w] = math.cos(angle), math.sin(angle)
             _gather(rings, n, ray, place, column)
             for k in range(parts):
                 if column.weight[k] > 0:
-                    _expect(rings, n, angle, k, w, place, albedo, glow, faults, column, mixture)
+                    _expect(rings, n, k, w, place, albedo, glow, faults, column, mixture)
             _judge(depth[w], rgb[w], w, place.has_colour, faults, column, mixture)
-        out[m] = _mean_over_cell(mixture, place.prior)
+        out[m] = mean_over_cell(mixture, place.prior)
+    return out
 
 
 @njit(cache=True)
@@ -155,38 +152,44 @@ def _gather(rings, n, ray, place, column):
 
 
 @njit(cache=True)
-def _expect(rings, n, angle, k, w, place, albedo, glow, faults, column, mixture):
+def _expect(rings, n, k, w, place, albedo, glow, faults, column, mixture):
     """Range, spread, colour and chance to fail of the surface that part k of a column meets."""
     s, p = column.surface[k], column.ray[k]
     column.reach[k], column.seen[k], column.gone[k], column.loose[k] = np.inf, 0.0, 1.0, 0.0
     if s == NOTHING:
         column.mean[k] = glow.rgb * glow.beyond
         return
-    ux, uy = math.cos(angle), math.sin(angle)
+    ux, uy = mixture.ux[w], mixture.uy[w]
     vx, vy = math.cos(rings.angles[p]), math.sin(rings.angles[p])
     met = float(rings.pane_m[n, p] if k == PANE else rings.range_m[n, p])
     nx, ny = facing(rings, n, vx, vy, met, s)
     cosine = max(nx * ux + ny * uy, LEAST_COSINE)
     d = met * (nx * vx + ny * vy) / cosine  # the surface goes on straight from where the ray met it
-    tangent = (uy * nx - ux * ny) / cosine
-    slope = mixture.slope[w, k]
-    slope[0], slope[1], slope[2] = -nx / cosine, -ny / cosine, d * tangent
-    swing = (slope * slope * place.prior).sum()
-    slope *= faults.range_scale
+    mixture.is_disc[w, k] = s >= len(rings.normals)
+    if mixture.is_disc[w, k]:
+        r = rings.radius_m
+        mixture.shape[w, k] = met * vx + r * nx, met * vy + r * ny, r
+    else:
+        mixture.shape[w, k] = nx, ny, d * cosine
+    turn = d * (uy * nx - ux * ny)
+    swing = (place.prior[0] + turn * turn * place.prior[2]) / (cosine * cosine)
     i = min(int(d / faults.range_step_m + 0.5), len(faults.spread_m) - 1)
     j = int(cosine * (faults.spread_m.shape[1] - 1) + 0.5)
-    bend = d * place.prior[2] * (0.5 + tangent * tangent)
-    noise = faults.range_scale**2 * (faults.spread_m[i, j] ** 2 + bend * bend + REST_M * REST_M)
+    mixture.noise[w, k] = faults.spread_m[i, j] ** 2
     light = 0.2126 * albedo[s, 0] + 0.7152 * albedo[s, 1] + 0.0722 * albedo[s, 2]
-    column.reach[k], mixture.noise[w, k] = faults.range_scale * d, noise
+    column.reach[k] = faults.range_scale * d
     column.seen[k] = 1 - (light * faults.missing_white[i, j] + (1 - light) * faults.missing_black[i, j])
-    beyond = (faults.max_range_m - column.reach[k]) / math.sqrt(2 * (noise + swing))
+    beyond = (faults.max_range_m / faults.range_scale - d) / math.sqrt(2 * (mixture.noise[w, k] + swing))
     column.gone[k] = 1 - column.seen[k] * (0.5 + 0.5 * math.erf(beyond))
+    # a reading of the surface itself says where in the cell the light was seen from
+    doubt = math.sqrt(swing)
+    if (mixture.depth[w] - d) ** 2 < 16 * (swing + mixture.noise[w, k]):
+        d, doubt = mixture.depth[w], 0.0
     lamp = glow.lamp * cosine / max(d, glow.lamp_near_m) ** 2
     bright = lamp + _ambient(
         glow, rings.x[n] + d * ux - place.left, rings.y[n] + d * uy - place.bottom, place
     )
-    column.loose[k] = 2 * lamp / bright * math.sqrt(swing) / max(d, glow.lamp_near_m)
+    column.loose[k] = 2 * lamp / bright * doubt / max(d, glow.lamp_near_m)
     column.mean[k] = glow.rgb * bright * albedo[s]
 
 
@@ -201,40 +204,38 @@ def _judge(depth, rgb, w, has_colour, faults, column, mixture):
     """Turn what a column can meet and what it measured into parts of a mixture."""
     mixture.share[w] = 0.0
     rest, wide = 0.0, faults.max_range_m - faults.min_range_m
-    none = 0.0
+    returns = (
+        1.0 if has_colour else 1 - faults.dropped
+    )  # with colour, lost columns are told from lost readings
+    passes = 1.0
     if column.weight[PANE] > 0:  # all of a column's rays fare alike in glass
         passed = faults.glass_through + faults.glass_none
-        none, column.weight[PANE] = faults.glass_none / passed, 1 - passed
+        passes, column.weight[PANE] = faults.glass_through / passed, 1 - passed
         column.weight[:PANE] *= passed
     for k in range(SURFACES + 1):
         if column.weight[k] == 0.0:
             continue
         believed = column.weight[k] * (_shade(rgb, k, faults, column) if has_colour else 1.0)
-        comes = column.seen[k] if k == PANE else (1 - none) * column.seen[k]
-        if not has_colour:
-            comes *= 1 - faults.dropped
+        comes = returns if k == PANE else returns * passes
         if depth != depth:
-            gone = 1 - (comes / column.seen[k] if column.seen[k] > 0 else 0.0) * (1 - column.gone[k])
-            rest += believed * ((1 - STRAY) * gone + 0.5 * STRAY)
+            rest += believed * ((1 - STRAY) * (1 - comes * (1 - column.gone[k])) + 0.5 * STRAY)
             continue
         rest += believed * 0.5 * STRAY / wide
-        reach, believed = column.reach[k], believed * (1 - STRAY) * comes
+        reach, believed = column.reach[k], believed * (1 - STRAY) * comes * column.seen[k]
         if faults.min_range_m <= depth <= reach < np.inf:
             rest += believed * faults.short / max(reach - faults.min_range_m, 0.05)
         low, high = min(reach, column.reach[0]), max(reach, column.reach[0])
         if k < PANE and low <= depth <= high < np.inf and high - low > 0.1:
             rest += 2 * SPLIT * believed * faults.mixed / (high - low)
         if reach < np.inf:
-            mixture.share[w, k] = believed * (1 - faults.short)
-            mixture.error[w, k] = depth - reach
+            mixture.share[w, k] = believed * (1 - faults.short) / faults.range_scale
     mixture.rest[w] = rest
 
 
 @njit(cache=True)
 def _shade(rgb, k, faults, column):
     """Density of a column's colour where its centre meets part k; the footprint may cover an edge."""
-    density, loose = 0.0, column.loose[k]
-    others = 0
+    density, others, loose = 0.0, 0, column.loose[k]
     for o in range(SURFACES):
         if k != PANE and o != k and column.weight[o] > 0.02:
             density += _gaussian_colour(rgb, column.mean[k], column.mean[o], 1 / 3, loose, faults)
@@ -254,71 +255,3 @@ def _gaussian_colour(rgb, mean, other, blend, loose, faults):
         total += ((rgb[c] - middle) / spread) ** 2
         scale *= spread
     return math.exp(-0.5 * total) / scale
-
-
-@njit(cache=True)
-def _mean_over_cell(mixture, prior):
-    """Log of the mean, over offsets drawn with variances `prior` [3], of the product of all columns."""
-    offset, spread, grip, pull = np.zeros(3), np.diag(prior), np.empty((3, 3)), np.empty(3)
-    nats = 0.0
-    for turn in range(ROUNDS + 1):
-        # while the offset is being found its own doubt softens each column, in the last round no more
-        if turn == ROUNDS:
-            spread[:] = 0.0
-        grip[:] = 0.0
-        pull[:], nats = 0.0, 0.0
-        for i in range(3):
-            grip[i, i] = 1 / prior[i]
-        for w in range(len(mixture.rest)):
-            nats += _reweigh(mixture, w, offset, spread, grip, pull)
-        det = _invert(grip, spread)
-        if turn < ROUNDS:
-            for i in range(3):
-                offset[i] = spread[i, 0] * pull[0] + spread[i, 1] * pull[1] + spread[i, 2] * pull[2]
-    for i in range(3):
-        nats -= 0.5 * offset[i] * offset[i] / prior[i] + 0.5 * math.log(prior[i])
-    return nats - 0.5 * math.log(det)
-
-
-@njit(cache=True)
-def _reweigh(mixture, w, offset, spread, grip, pull):
-    """Log density of a column at an offset; adds to the normal equations what it says of the offset."""
-    parts = mixture.share.shape[1]
-    density, total = np.zeros(parts), mixture.rest[w] + 1e-300
-    variance = np.empty(parts)
-    for k in range(parts):
-        if mixture.share[w, k] > 0:
-            a, b, c = mixture.slope[w, k]
-            left = mixture.error[w, k] - a * offset[0] - b * offset[1] - c * offset[2]
-            variance[k] = (
-                mixture.noise[w, k] + a * a * spread[0, 0] + b * b * spread[1, 1] + c * c * spread[2, 2]
-            )
-            variance[k] += 2 * (a * b * spread[0, 1] + a * c * spread[0, 2] + b * c * spread[1, 2])
-            if left * left < 80 * variance[k]:
-                scale = mixture.share[w, k] / math.sqrt(2 * math.pi * variance[k])
-                density[k] = scale * math.exp(-0.5 * left * left / variance[k])
-                total += density[k]
-    for k in range(parts):
-        if density[k] > 1e-9 * total:
-            weight = density[k] / total / variance[k]
-            for i in range(3):
-                pulled = weight * mixture.slope[w, k, i]
-                pull[i] += pulled * mixture.error[w, k]
-                for j in range(3):
-                    grip[i, j] += pulled * mixture.slope[w, k, j]
-    return math.log(total)
-
-
-@njit(cache=True)
-def _invert(a, out):
-    """Inverse of a symmetric 3 x 3 matrix; returns its determinant."""
-    out[0, 0] = a[1, 1] * a[2, 2] - a[1, 2] * a[1, 2]
-    out[0, 1] = a[0, 2] * a[1, 2] - a[0, 1] * a[2, 2]
-    out[0, 2] = a[0, 1] * a[1, 2] - a[0, 2] * a[1, 1]
-    out[1, 1] = a[0, 0] * a[2, 2] - a[0, 2] * a[0, 2]
-    out[1, 2] = a[0, 1] * a[0, 2] - a[0, 0] * a[1, 2]
-    out[2, 2] = a[0, 0] * a[1, 1] - a[0, 1] * a[0, 1]
-    det = a[0, 0] * out[0, 0] + a[0, 1] * out[0, 1] + a[0, 2] * out[0, 2]
-    out[1, 0], out[2, 0], out[2, 1] = out[0, 1], out[0, 2], out[1, 2]
-    out /= det
-    return det

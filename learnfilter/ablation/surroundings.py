@@ -24,7 +24,7 @@ class Rings(NamedTuple):
     """What surrounds some cells at one step.
 
     Attributes:
-        index: [r c] number of each cell, -1 elsewhere.
+        number: [r c] of each cell, -1 elsewhere.
         x, y: [n] centres, metres.
         angles: [p] site angle of each bearing, as the turned sensor meets them.
         range_m, surface: [n p] what a ray meets, numbered as albedos are; inf and NOTHING.
@@ -34,7 +34,7 @@ class Rings(NamedTuple):
         radius_m: of each of them.
     """
 
-    index: NDArray[np.int64]
+    number: NDArray[np.int64]
     x: NDArray[np.float64]
     y: NDArray[np.float64]
     angles: NDArray[np.float64]
@@ -51,8 +51,8 @@ def cast_world(known: Known, cells: NDArray[np.bool_], step: int, rays: int = 1)
     """Rings at some cells [r c] as the world is at a step, `rays` a bearing of the oracle's layout."""
     grid, layout, things, sight = known.grid, known.layout, known.things, known.faults.sight_m
     row, column = np.nonzero(cells)
-    index = np.full(cells.shape, -1)
-    index[row, column] = np.arange(len(row))
+    number = np.full(cells.shape, -1)
+    number[row, column] = np.arange(len(row))
     x, y = grid.x_centres()[column], grid.y_centres()[row]
     turned = np.nanmedian(known.bearings_rad - layout.strip_bearings())
     angles = layout.phase_rad + turned + np.arange(layout.bearings * rays) * layout.step_rad / rays
@@ -68,7 +68,7 @@ def cast_world(known: Known, cells: NDArray[np.bool_], step: int, rays: int = 1)
     discs = things.discs[step]
     _stand(x, y, angles, discs, things.disc_radius_m, things.aside_m, len(lines), range_m, surface)
     return Rings(
-        index, x, y, angles, range_m, surface, pane_m, pane, normals, discs, things.disc_radius_m
+        number, x, y, angles, range_m, surface, pane_m, pane, normals, discs, things.disc_radius_m
     )  # fmt: skip
 
 

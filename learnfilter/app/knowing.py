@@ -5,8 +5,8 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from learnfilter.ablation.known import Faults, Glow, Known, Things
-from learnfilter.ablation.oracle import FINER, Common, common_lattice, follow
+from learnfilter.ablation.known import FINER, Faults, Glow, Known, Things
+from learnfilter.ablation.oracle import common_lattice, follow
 from learnfilter.core.colour import srgb_to_linear
 from learnfilter.core.grid import PoseGrid
 from learnfilter.core.poses import compose, inverse
@@ -58,8 +58,7 @@ def oracle_trace(
     """
     live = live_cells(world.plan, common, world.robot_radius_m)
     known = know(world, drive, course, common)
-    lattice: Common = common_lattice(common, live)
-    return follow(known, lattice, course.name, course.poses, steps)
+    return follow(known, common_lattice(common, live), course.name, course.poses, steps)
 
 
 def know(world: World, drive: Drive, course: Course, common: PoseGrid) -> Known:
@@ -133,7 +132,7 @@ def _floor(world: World, grid: PoseGrid) -> tuple[NDArray[np.float64], NDArray[n
     start = (clear & on_floor.reshape(cells)).mean(axis=(1, 3))
     # an arc bulges from its chord, so what lies between two steps is held to half the radius only
     passable = (away >= radius / 2).reshape(cells).any(axis=(1, 3))
-    return start, clear.any(axis=(1, 3)), passable
+    return start, np.any(clear, axis=(1, 3)), np.asarray(passable)
 
 
 def _lean(strip: Strip, grid: PoseGrid) -> NDArray[np.int64]:

@@ -60,9 +60,8 @@ def store(folder: Path, name: str, trained: Trained, lattices: Lattices, facts: 
         for key, s in trained.stages.items()
         if s.iterations
     }
-    scores = [s.best_score for s in trained.stages.values() if s.iterations]
-    validation = scores[-1] if scores else None  # each stage begins with the best weights of the one before
-    whole = {"name": name, "model": described, "stages": stages, "validation": validation, **facts}
+    *_, last = trained.stages.values()  # each stage begins with the best weights of the one before
+    whole = {"name": name, "model": described, "stages": stages, "validation": last.best_score, **facts}
     motion = {f"motion.{key}": value for key, value in trained.motion.state_dict().items()}
     model = {f"model.{key}": value for key, value in tensors.items()}
     save_tensors(folder / f"{name}.safetensors", model | motion, whole)

@@ -14,7 +14,7 @@ from learnfilter.core.colour import srgb_to_linear
 from learnfilter.core.poses import compose, through_mount
 from learnfilter.core.strip import RingLayout
 from learnfilter.drives.drive import Drive
-from learnfilter.filtering.grid_filter import FilterState, weigh
+from learnfilter.filtering.grid_filter import FilterState, over_cells, weigh
 from learnfilter.filtering.motion import Lattice, MotionModel, predict
 from learnfilter.observe.contract import Strips
 
@@ -84,12 +84,12 @@ def rollout(
     Args:
         state: the belief to begin with.
         odometry: [s b 3]; the first is not applied, the drive begins there.
-        log_likelihood: step -> [b n h].
+        log_likelihood: step -> [b n h] at the centres of live cells.
         lattice, motion, floor: see `weigh` and `predict`.
     """
     for step in range(len(odometry)):
         if step > 0:
             belief, _ = predict(state.belief, odometry[step], lattice, motion)
             state = FilterState(belief, state.log_evidence)
-        state = weigh(state, log_likelihood(step), lattice, floor)
+        state = weigh(state, over_cells(log_likelihood(step), lattice), lattice, floor)
         yield state

@@ -23,7 +23,7 @@ from learnfilter.core.errors import DriveError, ImpossibleEvidence
 from learnfilter.core.estimate import modes
 from learnfilter.core.poses import compose, inverse, wrap
 from learnfilter.drives.drive import Drive
-from learnfilter.filtering.grid_filter import FilterState, lattice_of, start, weigh
+from learnfilter.filtering.grid_filter import FilterState, lattice_of, over_cells, start, weigh
 from learnfilter.filtering.motion import Lattice, MotionModel, predict
 from learnfilter.filtering.rollout import weighed_steps
 from learnfilter.observe.contract import ObservationModel
@@ -165,6 +165,7 @@ def smooth(
     def log_likelihood(step: int) -> Tensor:
         with torch.no_grad():
             evidence = model.log_likelihood(steps.strips.at(slice(step, step + 1)), features)
+        evidence = over_cells(evidence, lattice)
         return evidence + marks[step] if step in marks else evidence
 
     count = len(steps.rows)

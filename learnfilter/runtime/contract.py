@@ -41,7 +41,13 @@ class RobotModel(ABC):
 
 
 def pool_looks(scores: Floats, layout: RingLayout) -> Floats:
-    """[n h] log of the mean likelihood over the looks of a bin; bin h owns looks 2 h - 1 and 2 h."""
+    """[n h] log of the mean likelihood over each bin: 7/16 of either own look, 1/16 of the next ones.
+
+    Bin h owns looks 2 h - 1 and 2 h.
+    """
     if layout.looks == 1:
         return scores
-    return np.logaddexp(scores[:, 0::2], np.roll(scores, 1, axis=1)[:, 0::2]) - np.float32(np.log(2))
+    near, far = np.float32(np.log(7 / 16)), np.float32(np.log(1 / 16))
+    own = np.logaddexp(scores[:, 0::2], np.roll(scores, 1, axis=1)[:, 0::2]) + near
+    beside = np.logaddexp(np.roll(scores, 2, axis=1)[:, 0::2], np.roll(scores, -1, axis=1)[:, 0::2]) + far
+    return np.logaddexp(own, beside)

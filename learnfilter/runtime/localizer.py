@@ -16,6 +16,7 @@ from learnfilter.core.lock import Lock
 from learnfilter.core.poses import compose, through_mount
 from learnfilter.core.strip import RingLayout, Strip
 from learnfilter.runtime.bundle import Bundle
+from learnfilter.runtime.cells import over_cells
 from learnfilter.runtime.estimate import Estimate, base_mode
 from learnfilter.runtime.motion import predict
 
@@ -124,7 +125,8 @@ class Localizer:
         rows, columns = self._site.cells.T
         floor, poses = self._bundle.weighing.floor, len(rows) * len(belief)
         prior = belief[:, rows, columns] * np.float32(1 - floor) + np.float32(floor / poses)
-        logits = np.log(prior) + self._bundle.model.log_likelihood(depth, rgb, self._features).T
+        seen = self._bundle.model.log_likelihood(depth, rgb, self._features).T
+        logits = np.log(prior) + over_cells(seen, self._site.cells, self._live)
         peak = logits.max()
         weights = np.exp(logits - peak)
         total = float(weights.sum(dtype=np.float64))

@@ -108,7 +108,7 @@ def run_stage(
         tick: (done, total, note) after each iteration.
     """
     if settings.iterations == 0:
-        return StageResult(0, 0, math.nan, [])
+        return StageResult(0, 0, validate().score, [])
     parameters = [p for m in modules.values() for p in m.parameters() if p.requires_grad]
     optimiser = torch.optim.Adam(parameters, lr=settings.learning_rate)
     checkpoint, best_path = (

@@ -10,7 +10,6 @@ from hypothesis import strategies as st
 from scipy import stats
 from sklearn.calibration import calibration_curve
 
-from learnfilter.core.estimate import credible_rank
 from learnfilter.ablation.statistics import (
     Interval,
     bootstrap,
@@ -26,6 +25,7 @@ from learnfilter.ablation.statistics import (
     wilson,
 )
 from learnfilter.core.errors import ShapeError
+from learnfilter.core.estimate import credible_rank
 from learnfilter.core.seeds import stream
 
 

@@ -142,7 +142,7 @@ def test_conditions_are_told_apart_and_taken_together():
 
 
 def test_p_values_are_adjusted_for_the_number_of_conditions():
-    """(0, 6) discordant pairs: exact McNemar p = 1/32 (check_values S4), doubled by Holm for two conditions."""
+    """(0, 6) discordant pairs: p = 1/32 (exact McNemar, check_values S4), doubled by Holm for two."""
     table = rows([1] * 6, [0] * 6) + rows([1] * 6, [1] * 6, condition="dark")
     p = {d.condition: d.p for d in differences(table, "learned", "analytic", stream(0, "test"))}
     assert (p["usual"], p["dark"]) == (pytest.approx(2 / 32), 1.0)

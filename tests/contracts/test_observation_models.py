@@ -58,15 +58,17 @@ def test_turning_the_robot_rolls_the_heading_axis(name, layout):
 @pytest.mark.parametrize("name", ANALYTIC)
 def test_a_heading_bins_likelihood_is_the_mean_over_its_looks(name):
     """Two looks a quarter of a bin to either side of the centre: likelihoods of the strip as it would have
-    been laid one ring bearing further right or left, under a centre alone, averaged.  (One look a bin, of a
+    been laid one ring bearing further right or left, under a centre alone.  The mean over a bin of what is
+    linear between looks half a bin apart: the inner half takes 1/2 of either look, the outer quarters 3/4 of
+    the own look and 1/4 of the next, which makes 7/16 and 1/16.  (One look a bin, of a
     layout of 16 headings, shows what a strip scores at ring bearings two apart; a strip rolled by one
     column fills the gap.)"""
     seen, headings = strips(), np.arange(0, 16, 2)
     one = MODELS[name](LAYOUT)
     right = seen._replace(depth_m=seen.depth_m.roll(1, dims=1), rgb=seen.rgb.roll(1, dims=1))
     left = seen._replace(depth_m=seen.depth_m.roll(-1, dims=1), rgb=seen.rgb.roll(-1, dims=1))
-    looks = [score(one, turned, small_site())[:, :, headings] for turned in (right, left)]
-    expected = torch.logaddexp(*looks) - np.log(2)
+    high, low = (score(one, turned, small_site())[:, :, headings].double().exp() for turned in (right, left))
+    expected = (7 * (low + high) + low.roll(-1, dims=2) + high.roll(1, dims=2)).log().float() - np.log(16)
     assert_close(score(MODELS[name](TWO_LOOKS), seen, small_site(TWO_LOOKS)), expected, **FLOAT32)
 
 

@@ -5,6 +5,7 @@ import pytest
 import torch
 from hmmlearn.hmm import CategoricalHMM
 from numpy.testing import assert_allclose
+from scipy.ndimage import convolve
 from torch.autograd import gradcheck
 
 from learnfilter.core.errors import ImpossibleEvidence, ShapeError
@@ -120,11 +121,22 @@ def filtered(log_likelihoods):
     return [state.belief.flatten()[live].detach().numpy() for state in states]
 
 
+def over_cells_by_scipy(log_likelihoods):
+    """[s 32] log of likelihoods averaged over cells: scipy's convolution, live neighbours only."""
+    _, live = steps()
+    planes = np.zeros((len(log_likelihoods), 36))
+    planes[:, live] = np.exp(log_likelihoods)
+    kernel = np.outer([1, 6, 1], [1, 6, 1])[None, None] / 64
+    seen = convolve(planes.reshape(-1, 4, 3, 3), kernel, mode="constant")
+    there = convolve(HALL.live.numpy().astype(float)[None, None], kernel, mode="constant")
+    return np.log((seen / there).reshape(-1, 36)[:, live])
+
+
 def test_filtering_is_the_sum_over_all_paths():
     """Three strips, 32 poses: 32,768 paths added up one by one; walls end paths."""
     step, _ = steps()
     log_likelihoods = np.random.default_rng(0).normal(size=(3, 32))
-    expected = brute_force_belief(np.full(32, 1 / 32), step, log_likelihoods)
+    expected = brute_force_belief(np.full(32, 1 / 32), step, over_cells_by_scipy(log_likelihoods))
     assert_allclose(filtered(log_likelihoods)[-1], expected, atol=1e-10)
 
 
@@ -133,14 +145,15 @@ def test_filtering_is_a_hidden_markov_models():
     shows any of the three symbols seen."""
     step, _ = steps()
     rng = np.random.default_rng(1)
-    shows = rng.dirichlet(np.ones(3), size=32)
+    centres = rng.dirichlet(np.ones(3), size=32)
+    shows = np.exp(over_cells_by_scipy(np.log(centres.T))).T  # the mean over cells sums to one as well
     symbols = rng.integers(0, 3, 8)
     model = CategoricalHMM(33, init_params="", params="")
     model.startprob_ = np.append(np.full(32, 1 / 32), 0)
     lost = 1 - step.sum(axis=1, keepdims=True)
     model.transmat_ = np.vstack([np.hstack([step, lost]), np.eye(33)[-1]])
     model.emissionprob_ = np.vstack([np.hstack([shows, np.zeros((32, 1))]), np.eye(4)[-1]])
-    beliefs = filtered(np.log(shows[:, symbols].T))
+    beliefs = filtered(np.log(centres[:, symbols].T))
     for t, belief in enumerate(beliefs):
         expected = model.score_samples(symbols[: t + 1, None])[1][-1]
         assert_allclose(belief, expected[:32], atol=1e-9)

@@ -12,7 +12,8 @@ import numpy as np
 import pytest
 import torch
 
-from learnfilter.app.grounds import Lattices, Rehearsal, make_grounds
+from learnfilter.app.grounds import Rehearsal, lay, make_places
+from learnfilter.app.lattices import Lattices
 from learnfilter.core.strip import Strip, even_strip, lay_on_ring
 from learnfilter.observe.matcher import Matcher, MatcherShape
 from learnfilter.sim.conditions import Conditions
@@ -34,7 +35,8 @@ def rehearsed():
 
     def make(sites, drives, seed):
         rehearsal = Rehearsal(FAMILIES, sites, drives, 16, 64, 8.0, 8.0, Conditions())
-        grounds = make_grounds(rehearsal, STRIP, lattices, seed, "birth", lambda *told: None).grounds
+        places = make_places(rehearsal, STRIP, lattices.robot_radius_m, seed, "birth")
+        grounds = [lay(place, lattices, STRIP, rehearsal, seed, "birth") for place in places]
         fits = fit_analytic(grounds, 6.0, np.random.default_rng(0))
         blend = make_blend("beam+colour", layout, fits)
         with torch.no_grad():
