@@ -33,6 +33,9 @@ from learnfilter.core.seeds import stream
 from learnfilter.filtering.motion import shift_weights
 from learnfilter.filtering.trace import Trace
 
+# Share of belief spread over all live poses when it is scored, as filters in the study keep one too: a
+# drive on which the oracle is wrong shall not outweigh all others.
+FLOOR = 1e-4
 # Poses this many nats of the rough score below the best are not looked at closely.
 SCREEN_NATS = 60.0
 # Poses with a smaller share of the heaviest one's mass are dropped.
@@ -51,17 +54,19 @@ class Common(NamedTuple):
 
     Attributes:
         grid: the lattice.
+        live: [r c] where the plan says the robot can be.
         stands_for: [r c] flat cell in which mass of each cell counts: itself or the nearest live one.
     """
 
     grid: PoseGrid
+    live: NDArray[np.bool_]
     stands_for: NDArray[np.int64]
 
 
 def common_lattice(grid: PoseGrid, live: NDArray[np.bool_]) -> Common:
     """A lattice with its live cells [r c]."""
     row, column = ndimage.distance_transform_edt(~live, return_distances=False, return_indices=True)
-    return Common(grid, row.astype(np.int64) * grid.columns + column)
+    return Common(grid, live, row.astype(np.int64) * grid.columns + column)
 
 
 def follow(
@@ -80,14 +85,15 @@ def follow(
     row, column = grid.cell_of(poses[:, 0], poses[:, 1])
     cell = common.stands_for[row.clip(0, grid.rows - 1), column.clip(0, grid.columns - 1)]
     heading = grid.heading_of(poses[:, 2])
+    even = FLOOR * common.live / (common.live.sum() * grid.headings)
     columns: list[tuple] = []
     clock = time.perf_counter()
     for step, state in enumerate(beliefs(known, len(poses) if steps is None else steps)):
-        belief = sum_to(state, common)
+        belief = (1 - FLOOR) * sum_to(state, common) + even
         took = time.perf_counter() - clock
         mode = modes(belief, grid)[0]
         true = (heading[step], *divmod(cell[step], grid.columns))
-        log_truth = np.log(max(belief[true], 1e-30))
+        log_truth = np.log(belief[true])
         columns.append(
             (mode.pose, mode.mass, log_truth, credible_rank(belief, true, ranks), entropy(belief), took)
         )

@@ -7,8 +7,8 @@ stands moves all columns together.  So a pose's likelihood is the mean over its 
 mixture over the surfaces it can meet from there, and offset.py integrates.  Taking columns for
 independent with a wider spread instead is tens of nats too sure at cell borders.
 
-On 40 unseen sites of 12 x 12 m mean nats after 1, 2, 4 and 8 strips were .39 .43 .60 .37 with columns
-as they are, .38 .39 .57 .38 at exponent 0.8 and .38 .35 .55 .38 at 0.6: no exponent is needed.
+On 40 unseen sites of 12 x 12 m mean nats after 1, 2, 4 and 8 strips were .38 .43 .61 .35 with columns
+as they are and .38 .35 .55 .37 at exponent 0.6, where fewer were located after one: no exponent is used.
 """
 
 from __future__ import annotations

@@ -25,6 +25,7 @@ from learnfilter.ablation.verdict import (
     differences,
     scores,
 )
+from learnfilter.app.config import hold
 from learnfilter.app.grounds import Place
 from learnfilter.app.knowing import oracle_trace
 from learnfilter.app.models import LEARNED, Stored
@@ -132,6 +133,7 @@ def judge_models(
         folder: gets rows.jsonl and rows.parquet.
         seed: of the bootstrap.
     """
+    models = _chosen(models, study.models)
     contenders: list[Contender] = [*contenders_of(models, study.hide_colour)]
     if study.oracle:
         contenders.append(Oracle())
@@ -159,6 +161,14 @@ def judge_models(
         study.mark,
         {n: float(np.median([r["milliseconds"] for r in rows if r["contender"] == n])) for n in names},
     )
+
+
+def _chosen(models: dict[str, Stored], names: Sequence[str] | None) -> dict[str, Stored]:
+    """The models that a study compares: the learned one, and at least one analytic one."""
+    chosen = models if names is None else {name: models[name] for name in names if name in models}
+    good = (names is None or len(chosen) == len(names)) and LEARNED in chosen and len(chosen) > 1
+    hold("study.models", good, f"{LEARNED} and some of {', '.join(models)}", names)
+    return chosen
 
 
 def marks_for(study: StudyConfig) -> Marks:

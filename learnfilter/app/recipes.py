@@ -132,6 +132,7 @@ class StudyConfig:
     mark: int
     within_m: float
     within_deg: float
+    models: list[str] | None
     hide_colour: bool
     oracle: bool
 

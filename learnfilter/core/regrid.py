@@ -19,8 +19,10 @@ def regrid(belief: NDArray, own: PoseGrid, common: PoseGrid) -> NDArray:
     """
     if own == common:
         return belief
-    by_heading, by_row, by_column = _shares(own, common)
-    return np.einsum("Hh,hrc,Rr,Cc->HRC", by_heading, belief, by_row, by_column, optimize=True)
+    for axis, (share, size) in enumerate(zip(_shares(own, common), common.shape, strict=True)):
+        if share.shape != (size, size) or not np.array_equal(share, np.eye(size)):
+            belief = np.moveaxis(np.tensordot(share, belief, (1, axis)), 0, axis)
+    return belief
 
 
 @lru_cache(maxsize=4)  # a study asks for the same pair at every strip

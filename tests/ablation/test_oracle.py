@@ -99,7 +99,7 @@ def test_the_density_of_a_range_adds_up_to_one(y, conditions):
         for z in (*edges, np.nan)
     ]
     # the bins are coarser than the steepest spread there is, 6 mm; Laplace's integral is off by as much
-    assert sum(densities[:-1]) * 0.005 + densities[-1] == pytest.approx(1.0, abs=0.02)
+    assert sum(densities[:-1]) * 0.005 + densities[-1] == pytest.approx(1.0, abs=0.01)
 
 
 def test_the_spread_of_range_is_the_published_one():
