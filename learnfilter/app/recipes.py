@@ -21,6 +21,7 @@ class ObserveConfig:
     ring_hidden: int
     kernel: int
     residual: bool
+    analytic_start: bool
 
     def __post_init__(self) -> None:
         hold("observe.range_first_m", self.range_first_m > 0, "above 0", self.range_first_m)

@@ -26,7 +26,7 @@ from learnfilter.filtering.motion import MotionSettings
 from learnfilter.observe.blend import Blend
 from learnfilter.observe.contract import ObservationModel
 from learnfilter.observe.matcher import Birth, Matcher, MatcherShape
-from learnfilter.training.analytic import BirthSettings, Fits, birth_of, fit_analytic
+from learnfilter.training.analytic import BirthSettings, Fits, birth_of, fit_analytic, without_knowledge
 from learnfilter.training.loop import StageSettings
 from learnfilter.training.recipe import (
     FilterSettings,
@@ -113,7 +113,8 @@ def _birth(parent: ObservationModel, fits: Fits, settings: TrainConfig) -> Birth
     ranks = BirthSettings(
         observe.range_first_m, observe.range_growth, observe.range_rank, observe.colour_rank
     )
-    return birth_of(parent, fits, ranks)
+    birth = birth_of(parent, fits, ranks)
+    return birth if observe.analytic_start else without_knowledge(birth, stream(settings.seed, "blank"))
 
 
 def untrained_gap(

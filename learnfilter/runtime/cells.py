@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -9,7 +11,7 @@ SIDE = np.float32(1 / 8)  # weight of the cell on either side
 
 
 def over_cells(
-    log_likelihood: NDArray[np.float32], cells: NDArray[np.int64], live: NDArray[np.float32]
+    log_likelihood: NDArray[np.float32], cells: NDArray[np.int64], live: NDArray[np.bool_]
 ) -> NDArray[np.float32]:
     """[h n] log of the mean likelihood over each live cell.
 
@@ -19,7 +21,7 @@ def over_cells(
     Args:
         log_likelihood: [h n] nats at the centres of live cells.
         cells: [n 2] row, column of each.
-        live: [r c] 1 where a cell is live.
+        live: [r c] whether a cell is live.
     """
     rows, columns = cells.T
     peak = log_likelihood.max()
@@ -29,7 +31,7 @@ def over_cells(
     return np.log(np.maximum(mean, np.finfo(np.float32).tiny)) + peak
 
 
-def _beside(planes: NDArray[np.float32]) -> NDArray[np.float32]:
+def _beside(planes: NDArray[Any]) -> NDArray[np.float32]:
     """Each cell of planes [... r c] averaged with its neighbours; nothing beyond the edges."""
     by_column = (1 - 2 * SIDE) * planes
     by_column[..., 1:] += SIDE * planes[..., :-1]

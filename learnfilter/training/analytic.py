@@ -27,6 +27,8 @@ from learnfilter.observe.mixture import RangeMixture
 FINE_FIRST_M, FINE_GROWTH = 0.05, 0.02
 # Where tuning begins.  Independent columns would be 1; every tuned exponent so far lies below 0.3.
 FIRST_EXPONENT = 0.3
+# Of features that know nothing: most waves over all nodes, and their weight.
+WAVES, FAINT = 4.0, 0.02
 
 
 class Fits(NamedTuple):
@@ -123,4 +125,29 @@ def birth_of(tuned: Blend, fits: Fits, settings: BirthSettings) -> Birth:
         colour.level if colour else 0.0,
         exponents["beam"],
         exponents.get("colour", 1.0),
+    )
+
+
+def without_knowledge(birth: Birth, rng: np.random.Generator) -> Birth:
+    """A birth of the same sizes that knows nothing: what the analytic start is worth is learned against it.
+
+    Features of neighbouring nodes stay alike, which is all that ranges and colours have in common with the
+    fitted ones; they hardly weigh at birth.
+    """
+
+    def smooth(table: NDArray[np.float64]) -> NDArray[np.float64]:
+        waves = rng.uniform(0, WAVES, table.shape[1]), rng.uniform(0, 2 * np.pi, table.shape[1])
+        places = np.linspace(0, 1, len(table))[:, None]
+        return np.cos(2 * np.pi * waves[0] * places + waves[1])
+
+    ranges, colours = birth.range_factors, birth.colour_factors
+    return birth._replace(
+        range_factors=ranges._replace(
+            measured=smooth(ranges.measured),
+            expected=smooth(ranges.expected),
+            bias=np.zeros_like(ranges.bias),
+        ),
+        colour_factors=colours and colours._replace(root=rng.normal(size=colours.root.shape)),
+        range_exponent=FAINT,
+        colour_exponent=FAINT,
     )

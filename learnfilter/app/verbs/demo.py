@@ -90,7 +90,8 @@ def run(settings: DemoConfig) -> dict[str, Any]:
 def _training_part(settings: DemoConfig) -> TrainConfig:
     """The settings a training run would have: invented sites, whatever is judged on."""
     fields = {key: getattr(settings, key) for key in TrainConfig.__dataclass_fields__}
-    return TrainConfig(**{**fields, "site": replace(settings.site, file=None, **dict.fromkeys(FILE_OPTIONS))})
+    of_file: dict[str, Any] = dict.fromkeys(("file", *FILE_OPTIONS))
+    return TrainConfig(**{**fields, "site": replace(settings.site, **of_file)})
 
 
 def _replay(folder: RunFolder, place: Place) -> dict[str, Any]:
