@@ -33,7 +33,7 @@ from learnfilter.core.seeds import stream  # noqa: E402
 
 SEEDS = (0, 1, 2)
 RUNS = Path("runs/measure-evidence")
-SITES, DRIVES, ROWS = 64, 1, 44
+SITES, DRIVES, ROWS = 48, 1, 44
 ORACLE_SITES = 24
 AS_TRAINED, NEW_LAYOUT, PARKED = "as-trained", "unseen-layout", "parked"
 LEAST_GAP = 0.05
