@@ -32,6 +32,15 @@ def commands(text: str) -> list[str]:
     return [line.split("  #")[0].strip() for line in found]
 
 
+def first_job(line: str) -> tuple[str, list[str]]:
+    """Verb and settings of a command; of a sweep those of its first job, without the launcher's."""
+    _, verb, *words = shlex.split(line)
+    if "-m" not in words:
+        return verb, words
+    own = [word for word in words if word != "-m" and not word.startswith("hydra")]
+    return verb, [word if "[" in word else word.split(",")[0] for word in own]
+
+
 IN_README = [line for block in blocks(README, "sh") for line in commands(block)]
 IN_HELP = [line for verb in VERBS for line in commands(verb_text(verb))]
 
@@ -39,7 +48,7 @@ IN_HELP = [line for verb in VERBS for line in commands(verb_text(verb))]
 @pytest.mark.parametrize("line", [*IN_README, *IN_HELP])
 def test_a_command_in_the_documents_composes(line):
     """Its verb and every setting exist, and every value is in range."""
-    _, verb, *overrides = shlex.split(line)
+    verb, overrides = first_job(line)
     typed(compose_settings(verb, overrides), VERBS[verb])
 
 
@@ -54,7 +63,7 @@ def test_commands_in_the_readme_use_what_earlier_ones_made():
     """Read from the top, each run folder that is named has been made, and each toy world exists."""
     made = set()
     for line in IN_README:
-        _, verb, *overrides = shlex.split(line)
+        verb, overrides = first_job(line)
         settings = dict(word.split("=", 1) for word in overrides)
         used = [value for value in settings.values() if value.startswith("runs/")]
         assert {tuple(value.split("/")[1:3]) for value in used} <= made, line

@@ -24,7 +24,7 @@ from learnfilter.runtime.motion import MotionNoise
 from learnfilter.runtime.schema import hold
 from learnfilter.runtime.site import RobotSite, read_site
 
-SCHEMA = 1
+SCHEMA = 2  # 2: a step weighs the mean over each cell and heading bin
 MANIFEST, WEIGHTS, SITE, VECTORS = "manifest.json", "weights.safetensors", "site.safetensors", "vectors.npz"
 MANIFEST_SCHEMA = Path(__file__).with_name("manifest.schema.json")
 

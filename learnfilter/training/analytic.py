@@ -144,7 +144,7 @@ def without_knowledge(birth: Birth, rng: np.random.Generator) -> Birth:
     return birth._replace(
         range_factors=ranges._replace(
             measured=smooth(ranges.measured),
-            expected=smooth(ranges.expected),
+            expected=np.vstack([smooth(ranges.expected[:-1]), ranges.expected[-1:]]),  # unsure stays silent
             bias=np.zeros_like(ranges.bias),
         ),
         colour_factors=colours and colours._replace(root=rng.normal(size=colours.root.shape)),

@@ -5,13 +5,15 @@ import math
 
 import numpy as np
 import pytest
+import torch
 
 from learnfilter.ablation.study import Arena, Filter, Marks, read_rows, run_study
 from learnfilter.core.errors import InputError
-from learnfilter.filtering.course import Ground
+from learnfilter.filtering.course import Ground, truth_of
 from learnfilter.filtering.motion import MotionModel
-from learnfilter.filtering.trace import trace
-from tests.contracts.small import blend, small_site
+from learnfilter.filtering.trace import Trace, trace
+from learnfilter.observe.contract import ObservationModel
+from tests.contracts.small import LAYOUT, blend, render, small_plan, small_site
 from tests.training.drives import drive_on_small_site
 
 FLOOR = 1e-4
@@ -28,7 +30,40 @@ def ground(*lengths: int) -> Ground:
 
 
 def study(file, contenders, grounds, condition="usual"):
-    return run_study(contenders, [Arena(condition, g) for g in grounds], Marks(), file, lambda *_: None)
+    return rows_in(file, contenders, *(Arena(condition, g) for g in grounds))
+
+
+def rows_in(file, contenders, *arenas, marks=None):
+    return run_study(contenders, arenas, marks or Marks(), file, lambda *_: None)
+
+
+class Told:
+    """A contender that believes what it is told, poses [s 3], and is sure of it."""
+
+    name = "told"
+
+    def __init__(self, poses):
+        self.poses = np.asarray(poses, float)
+
+    def on(self, arena):
+        def run(number, strips):
+            poses = self.poses[:strips]
+            ones = np.ones(len(poses))
+            return Trace(poses, 0.95 * ones, -ones, 0.25 * ones, ones, 0.001, None)
+
+        return run
+
+
+class Blank(ObservationModel):
+    """Every pose is as likely as any other."""
+
+    layout = LAYOUT
+
+    def read(self, site):
+        return site.n_cells
+
+    def scores(self, strips, features):
+        return torch.zeros(len(strips.depth_m), features, LAYOUT.looks * LAYOUT.bearings // 2)
 
 
 def timeless(row):
@@ -98,3 +133,99 @@ def test_a_damaged_row_is_named(tmp_path):
     with pytest.raises(InputError) as raised:
         read_rows(file)
     assert (raised.value.file, raised.value.place) == (file, "line 2")
+
+
+# --- where, and on what, beliefs are judged -----------------------------------------------------------
+
+# Of the drive on the small site, x = 0.75, 1.25, ... at y = 1.25, heading 0, half a turn about (3, 3).
+TWINS = [[5.25, 4.75, math.pi], [4.75, 4.75, math.pi], [4.25, 4.75, -math.pi]]
+
+
+@pytest.mark.parametrize(("fold", "located"), [(1, 0.0), (2, 1.0)])
+def test_where_half_a_turn_changes_nothing_its_pose_is_as_right(tmp_path, fold, located):
+    """Nobody can tell the two apart; on any other plan the twin is 5 m off."""
+    arena = Arena("usual", ground(3), fold=fold, middle=(3.0, 3.0))
+    (row,) = rows_in(tmp_path / "rows.jsonl", [Told(TWINS)], arena)
+    assert row["right"] == [located] * 3 and row["located_2"] == located
+
+
+@pytest.mark.parametrize(("fold", "false_lock"), [(1, True), (2, False)])
+def test_a_lock_at_the_twin_is_false_where_the_plan_tells_them_apart(tmp_path, fold, false_lock):
+    """Three sure strips lock, at the twin, after a metre."""
+    arena = Arena("usual", ground(3), fold=fold, middle=(3.0, 3.0))
+    (row,) = rows_in(tmp_path / "rows.jsonl", [Told(TWINS)], arena)
+    assert (row["false_lock"], row["lock_metres"]) == (false_lock, pytest.approx(1.0))
+
+
+def test_a_quarter_turn_is_not_right_where_only_half_a_turn_is(tmp_path):
+    """(0.75, 1.25) a quarter turn about (3, 3) is (4.75, 0.75): right in fourfold symmetry only."""
+    quarter = [[4.75, 0.75, math.pi / 2]]
+    found = {}
+    for fold in (2, 4):
+        arena = Arena("usual", ground(1), fold=fold, middle=(3.0, 3.0))
+        (row,) = rows_in(tmp_path / f"{fold}.jsonl", [Told(quarter)], arena)
+        found[fold] = row["right"]
+    assert found == {2: [0.0], 4: [1.0]}
+
+
+@pytest.mark.parametrize(("units", "sites"), [((), ["small", "small"]), (("a", "b"), ["a", "b"])])
+def test_rows_name_their_unit_of_evidence(tmp_path, units, sites):
+    """The site, unless each drive has a unit of its own."""
+    rows = rows_in(tmp_path / "rows.jsonl", [contender()], Arena("usual", ground(2, 2), units=units))
+    assert [row["site"] for row in rows] == sites
+
+
+def test_marks_say_when_and_how_near(tmp_path):
+    """Estimates 0.3 m off are near within 0.4 m and not within 0.2 m, after 3 strips and no others."""
+    off = ground(3).courses[0].poses + np.array([0.0, 0.3, 0.0])
+    for within_m, located in ((0.4, 1.0), (0.2, 0.0)):
+        marks = Marks((3, 9), within_m, math.radians(15))
+        file = tmp_path / f"{within_m}.jsonl"
+        (row,) = rows_in(file, [Told(off)], Arena("usual", ground(3)), marks=marks)
+        judged = {key: row[key] for key in row if key.startswith(("located_", "nll_"))}
+        assert judged == {"located_3": located, "nll_3": 1.0}
+
+
+def test_marks_say_how_far_a_heading_may_be_off(tmp_path):
+    """Ten degrees off are near within 15 and not within 5."""
+    off = ground(1).courses[0].poses + np.array([0.0, 0.0, math.radians(10)])
+    right = []
+    for degrees in (15, 5):
+        marks = Marks((1,), 0.5, math.radians(degrees))
+        file = tmp_path / f"{degrees}.jsonl"
+        right += [row["right"] for row in rows_in(file, [Told(off)], Arena("usual", ground(1)), marks=marks)]
+    assert right == [[1.0], [0.0]]
+
+
+@pytest.mark.parametrize(("last", "kept"), [(2, 2), (8, 4)])
+def test_a_row_keeps_confidence_rank_and_right_of_every_strip_judged(tmp_path, last, kept):
+    """Four strips, of which none beyond the last mark is filtered."""
+    marks = Marks((1, last))
+    (row,) = rows_in(tmp_path / "rows.jsonl", [contender()], Arena("usual", ground(4)), marks=marks)
+    assert [len(row[key]) for key in ("mass", "right", "rank")] == [kept] * 3
+
+
+def test_a_lattice_of_ones_own_that_is_the_common_one_changes_nothing(tmp_path):
+    """The same drives under another key: the same rows but for name and wall time."""
+    place = ground(3)
+    both = [contender(), contender("own")._replace(lattice="own")]
+    common, own = rows_in(tmp_path / "rows.jsonl", both, Arena("usual", place, {"own": place}))
+    assert timeless(own) == timeless(common) | {"contender": "own"}
+
+
+def test_beliefs_on_a_finer_lattice_are_scored_on_the_common_one(tmp_path):
+    """A filter that knows nothing, on cells half as wide: the true common cell has as much belief as its
+    share of all live fine cells, and each of 16 headings as much as any other."""
+    place, fine = ground(1), render(small_plan(), cell_m=0.25)
+    (course,) = place.courses
+    own = Ground(fine, (course._replace(truth=truth_of(fine, course.poses)),))
+    blank = Filter("blank", Blank(), MotionModel(), FLOOR, lattice="fine")
+    (row,) = rows_in(
+        tmp_path / "rows.jsonl", [blank], Arena("usual", place, {"fine": own}), marks=Marks((1,))
+    )
+    x, y = fine.grid.x_centres()[fine.cells[:, 1]], fine.grid.y_centres()[fine.cells[:, 0]]
+    # the robot stands at (0.75, 1.25); a common cell is 0.5 m wide and its corners lie at multiples of that
+    inside = (np.abs(x - 0.75) < 0.25) & (np.abs(y - 1.25) < 0.25)
+    assert inside.sum() == 4
+    expected = -math.log(inside.sum() / len(fine.cells) / 16)
+    assert row["nll_1"] == pytest.approx(expected, abs=1e-5)  # beliefs are float32

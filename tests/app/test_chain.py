@@ -9,7 +9,9 @@ from pathlib import Path
 import numpy as np
 import pyarrow.parquet as pq
 import pytest
+from omegaconf import OmegaConf
 from PIL import Image
+from safetensors.numpy import load_file
 
 from learnfilter.app.command import run_command
 from learnfilter.app.judging import write_rows
@@ -23,6 +25,10 @@ from tests.app.tiny import OFFICE, python
 pytestmark = pytest.mark.slow
 
 SQUARE = data_dir("toy_worlds") / "square_room.geojson"
+GOOD, WIDE = (
+    "{office}/rehearse/drives/drives/0000-00.parquet",
+    "{office}/rehearse/wide/drives/0000-00.parquet",
+)
 MODELS = ("beam", "beam+colour", "endpoint", "endpoint+colour", "matcher")
 # DEVELOPERS.md, Formats
 ESTIMATES = ["time_s", "x_m", "y_m", "heading_rad", "covariance", "mass", "entropy_nats", "log_evidence_nats",
@@ -226,6 +232,53 @@ def test_a_study_too_short_for_its_verdict_is_the_users_to_mend(demo, office, el
     assert "study.mark" in capsys.readouterr().err.splitlines()[-1]
 
 
+@pytest.fixture(scope="module")
+def tuned(demo, office, tmp_path_factory) -> Path:
+    """Run folder of a training that went on from the demo's models on the rehearsed drive."""
+    runs = tmp_path_factory.mktemp("tuned")
+    words = [
+        "train", "name=tuned", f"runs={runs}", "threads=1", f"start={demo}", f"site.file={OFFICE}",
+        f"drives=[{GOOD}]".format(office=office), "train.recorded.iterations=2",
+        "train.recorded.validate_every=1", "train.lengths=[3]", "train.validation_steps=3",
+    ]  # fmt: skip
+    assert run_command(words) == 0
+    return runs / "train" / "tuned"
+
+
+def test_tuning_on_recorded_drives_leaves_the_models_of_the_run_it_went_on_from(demo, tuned):
+    """The same names, tensors and sizes; the drive's own way of moving has been learned from."""
+    before, after = (
+        {path.stem: load_file(path) for path in run.glob("models/*.safetensors")} for run in (demo, tuned)
+    )
+    assert before.keys() == after.keys() >= {*MODELS}
+    for name, tensors in before.items():
+        assert {key: value.shape for key, value in tensors.items()} == {
+            key: value.shape for key, value in after[name].items()
+        }
+        assert any(not np.array_equal(value, after[name][key]) for key, value in tensors.items()), name
+
+
+def test_tuning_keeps_sensor_and_lattice_of_the_run_it_went_on_from(demo, tuned):
+    """The demo's lattice has 16 headings, which the command did not say."""
+    settings = [OmegaConf.load(run / "config.yaml") for run in (demo, tuned)]
+    assert settings[0].grid.headings == 16
+    assert all(settings[0][key] == settings[1][key] for key in ("strip", "grid", "motion", "observe"))
+
+
+def test_tuned_models_are_judged_like_any_others(tuned, office, elsewhere):
+    """On rows of the same drive: blocks of ten rows, each of them a start."""
+    words = [
+        "ablate", f"model={tuned}", f"site.file={OFFICE}", f"drives=[{GOOD}]".format(office=office),
+        "blocks={rows: 10, first: 1, every: 2}", "study.models=[beam,matcher]", "study.marks=[1]",
+        "study.mark=1", "study.hide_colour=false",
+    ]  # fmt: skip
+    assert run_command(words) == 0
+    results = summary_of(Path("runs/ablate/default"))["results"]
+    assert (results["conditions"], results["drives"], results["sites"]) == (["as recorded"], 10, 1)
+    assert {row["contender"] for row in results["scores"]} == {"beam", "matcher"}
+    assert {figures["contender"] for figures in results["trust"]} == {"beam", "matcher"}
+
+
 def test_a_model_goes_to_another_plan_without_training(office):
     """The bundle names the plan by its digest, and the runtime reproduces it there too."""
     manifest = json.loads((office / "export/office/bundle/manifest.json").read_text())
@@ -294,10 +347,6 @@ def damaged(office, tmp_path_factory) -> Path:
 
 
 ON_OFFICE = f"site.file={OFFICE}"
-GOOD, WIDE = (
-    "{office}/rehearse/drives/drives/0000-00.parquet",
-    "{office}/rehearse/wide/drives/0000-00.parquet",
-)
 MISTAKES = [
     (("ablate", "model=nowhere"), "model"),
     (("export", "model=nowhere", ON_OFFICE), "model"),
@@ -321,6 +370,13 @@ MISTAKES = [
     (("ablate", "model={demo}", "site.width_m=3"), "site.width_m"),
     (("ablate", "model={demo}", "study.drives=-1"), "study.drives"),
     (("ablate", "model={demo}", "study.rows=3"), "study.mark"),
+    (("ablate", "model={demo}", "study.models=[beam]"), "study.models"),
+    (("ablate", "model={demo}", ON_OFFICE, f"drives=[{GOOD}]", "study.oracle=true"), "study.oracle"),
+    (("ablate", "model={demo}", ON_OFFICE, f"drives=[{GOOD}]", "blocks={{rows: 10, first: 3, every: 1}}"),
+     "blocks"),
+    (("train", "start={demo}"), "drives"),
+    (("train", "start={demo}", f"drives=[{GOOD}]"), "site.file"),
+    (("train", "start={demo}", ON_OFFICE, f"drives=[{WIDE}]"), "180"),
     (("train", "train.sites=-1"), "train.sites"),
     (("train", "train.matching.iterations=-1"), "iterations"),
     (("demo", "grid.cell_m=-1"), "grid.cell_m"),

@@ -55,6 +55,14 @@ def outcome(verb_raises: BaseException, monkeypatch, capsys) -> tuple[int, str]:
         (["plan", f"site.file={SQUARE}", "name=a/b"], "a/b"),
         (["survey", f"site.file={SQUARE}", "strip=radar"], "scanner-180"),
         (["ablate", "drives=[a.parquet]"], "site.file"),
+        (["ablate", "conditions=[moon]"], "moon"),
+        (["ablate", "conditions=[as-trained+moon]"], "moon"),
+        (["ablate", "conditions=[]"], "conditions"),
+        (["train", "part=moon"], "no-residual"),
+        (["train", "start=some"], "drives"),
+        (["train", "drives=[a.parquet]"], "start"),
+        (["train", "start=some", "drives=[a.parquet]"], "site.file"),
+        (["train", "start=nowhere", "drives=[a.parquet]", f"site.file={SQUARE}"], "nowhere"),
         (["label", f"site.file={SQUARE}", "drive=a.csv", "known={0: [1, 2]}"], "heading_deg"),
         (["rehearse", "site.families=[attics]"], "offices"),
         (["rehearse", "condition.people=-1"], "condition.people"),
@@ -129,6 +137,18 @@ def test_settings_of_ones_own_are_taken_from_a_folder(tmp_path, capsys):
     (tmp_path / "own" / "site" / "mine.yaml").write_text(text)
     assert run_command(["plan", "--config-dir", "own", "site=mine"]) == 0
     assert "4.0 x 4.0 m" in capsys.readouterr().out
+
+
+def test_a_condition_of_ones_own_is_looked_for_in_that_folder(tmp_path, capsys):
+    """fog.yaml is found, so what is missing is only the training run; without the folder, fog itself is."""
+    (tmp_path / "own" / "condition").mkdir(parents=True)
+    (tmp_path / "own" / "condition" / "fog.yaml").write_text("light_level: 0.5\n")
+    words = ["ablate", "model=nowhere", "conditions=[fog+crowd]"]
+    said = []
+    for where in (["--config-dir", "own"], []):
+        assert run_command([*words, *where]) == 2
+        said.append(capsys.readouterr().err)
+    assert "nowhere" in said[0] and "fog" not in said[0] and "fog" in said[1]
 
 
 def test_a_sweep_runs_each_value_in_a_folder_of_its_own(tmp_path):

@@ -2,15 +2,17 @@
 
 from pathlib import Path
 
+import numpy as np
 import pytest
 from omegaconf import OmegaConf
+from PIL import Image
 
-from learnfilter.app.build import build_conditions, build_strip
+from learnfilter.app.build import build_conditions, build_plan, build_strip
 from learnfilter.app.command import compose_settings
 from learnfilter.app.config import GridConfig, MotionConfig, StripConfig, flat, typed
 from learnfilter.app.paths import data_dir
 from learnfilter.app.verbs import VERBS
-from learnfilter.core.errors import ConfigError
+from learnfilter.core.errors import ConfigError, PlanError
 from learnfilter.core.strip import lay_on_ring
 from learnfilter.sim.conditions import Conditions
 
@@ -20,6 +22,12 @@ GROUPS = {"strip": StripConfig, "grid": GridConfig, "motion": MotionConfig}
 
 def options(group: str) -> list[str]:
     return sorted(path.stem for path in (CONFIGS / group).glob("*.yaml"))
+
+
+def conditions_of(*overrides: str) -> dict[str, Conditions]:
+    """What a study is made under."""
+    settings = typed(compose_settings("ablate", list(overrides)), VERBS["ablate"])
+    return {name: build_conditions(condition) for name, condition in settings.conditions.items()}
 
 
 def strip(**changes: object) -> StripConfig:
@@ -95,6 +103,62 @@ def test_conditions_join():
     """A list of conditions applies them all, in order."""
     settings = typed(compose_settings("rehearse", ["condition=[dim-light,crowd]"]), VERBS["rehearse"])
     assert build_conditions(settings.condition) == Conditions(light_level=0.3, people=6)
+
+
+def test_a_plus_joins_conditions_under_one_name():
+    """Dim light with a crowd is one condition of a study, and as-trained is another."""
+    found = conditions_of("conditions=[as-trained,dim-light+crowd]")
+    assert found == {
+        "as-trained": Conditions(),
+        "dim-light+crowd": Conditions(light_level=0.3, people=6),
+    }
+
+
+def test_all_conditions_are_those_that_have_a_file():
+    """And no two of them are the same."""
+    found = conditions_of("conditions=[all]")
+    assert set(found) == set(options("condition"))
+    assert len({repr(conditions) for conditions in found.values()}) == len(found)
+
+
+def test_a_condition_of_ones_own_is_found_by_name(tmp_path):
+    """Beside the shipped ones, and joined with them."""
+    (tmp_path / "condition").mkdir()
+    (tmp_path / "condition" / "fog.yaml").write_text("missing_scale: 5.0\nlight_level: 0.5\n")
+    here = f"hydra.searchpath=['file://{tmp_path}']"  # what --config-dir becomes
+    found = conditions_of("conditions=[fog,fog+crowd]", here)
+    assert found == {
+        "fog": Conditions(missing_scale=5.0, light_level=0.5),
+        "fog+crowd": Conditions(missing_scale=5.0, light_level=0.5, people=6),
+    }
+
+
+@pytest.mark.parametrize("verb", ["train", "demo"])
+@pytest.mark.parametrize("part", options("part"))
+def test_every_part_changes_the_recipe_but_the_whole(verb, part):
+    """Part of a sweep that changed nothing would be a repetition passed off as a finding."""
+    whole, changed = (typed(compose_settings(verb, given), VERBS[verb]) for given in ([], [f"part={part}"]))
+    assert (changed == whole) == (part == "whole")
+
+
+def test_a_picture_is_read_as_its_settings_say(tmp_path):
+    """6 x 4 pixels of half a metre, a frame of walls one pixel thick, the lower left corner at (10, -2)."""
+    levels = np.zeros((4, 6), np.uint8)
+    levels[1:-1, 1:-1] = 255
+    Image.fromarray(levels).save(tmp_path / "hall.png")
+    words = ["metres_per_pixel=0.5", "wall_grey=[0,60]", "free_grey=[200,255]", "left_m=10", "bottom_m=-2"]
+    words = [f"site.file={tmp_path}/hall.png", *(f"site.{word}" for word in words)]
+    plan = build_plan(typed(compose_settings("plan", words), VERBS["plan"]).site)
+    assert plan.bounds == pytest.approx((10.0, -2.0, 13.0, 0.0))
+
+
+@pytest.mark.parametrize("key", ["metres_per_pixel=0.5", "wall_grey=[0,60]", "left_m=10"])
+def test_settings_of_a_picture_are_refused_for_another_plan(key):
+    """A GeoJSON plan has a scale of its own: a setting that does nothing would mislead."""
+    words = [f"site.file={data_dir('toy_worlds') / 'square_room.geojson'}", f"site.{key}"]
+    with pytest.raises(PlanError) as raised:
+        build_plan(typed(compose_settings("plan", words), VERBS["plan"]).site)
+    assert raised.value.got == key.split("=")[0]
 
 
 def test_shipped_folders_are_found_beside_the_package_in_a_checkout():

@@ -95,6 +95,27 @@ def test_colour_lies_along_its_own_axis():
 
 
 @pytest.mark.parametrize(
+    ("step", "source"),
+    [
+        (1, [0, 1, 2, -1, -1, 5, 6, 7, 8]),
+        (2, [0, -1, 2, -1, -1, -1, 6, -1, 8]),
+        (3, [0, -1, -1, -1, -1, 5, -1, -1, 8]),
+    ],
+)
+def test_every_nth_column_is_counted_over_the_gaps(step, source):
+    """Served are 0 1 2 5 6 7 8: every second of them is 0 2 6 8, every third 0 5 8; the rest falls silent."""
+    layout = lay(-45, STEP_DEG, 9, blind=(3, 4))
+    assert_array_equal(layout.every(step).source, source)
+
+
+def test_columns_left_out_move_no_bearing():
+    """The others look where they looked."""
+    layout = lay(-43.59375, STEP_DEG, 8)
+    assert_array_equal(layout.every(2).strip_bearings(), layout.strip_bearings())
+    assert_array_equal(layout.every(2).look_angles(), layout.look_angles())
+
+
+@pytest.mark.parametrize(
     ("bearings", "blind", "message"),
     [
         ((0.0, 0.0, 0.1), (), "share a bearing"),

@@ -2,14 +2,16 @@
 
 import json
 import shutil
+from dataclasses import replace
 
 import numpy as np
 import pytest
 
-from learnfilter.export import against_torch, compare
+from learnfilter.export import against_torch, compare, write_bundle
 from learnfilter.export.check import total_variation
+from learnfilter.observe.describe import describe, rebuild
 from learnfilter.runtime.bundle import MANIFEST, seal
-from tests.shipping import KINDS, filter_of, rehearsed
+from tests.shipping import KINDS, LAYOUT, PROVENANCE, filter_of, rehearsed
 
 SAME = 1e-4  # what the project promises (issue 2, runtime_tv)
 
@@ -25,6 +27,18 @@ def test_the_runtime_believes_what_torch_believes(shipped, kind):
 def test_the_runtime_reproduces_the_vectors(shipped, kind):
     """Missing columns and a strip without any reading included."""
     assert compare(shipped(kind)) < SAME
+
+
+@pytest.mark.parametrize("kind", ["beam+colour", "endpoint+colour", "matcher"])
+def test_a_filter_that_uses_every_second_column_is_reproduced(tmp_path, kind):
+    """The same model and rings, half of the strip silent; and the silence shows against the whole strip."""
+    site, drive = rehearsed()
+    layout, whole = LAYOUT.every(2), filter_of(kind)
+    half = whole._replace(model=rebuild(layout, *describe(whole.model)), site=replace(site, layout=layout))
+    write_bundle(tmp_path / "half", half, drive, PROVENANCE)
+    assert compare(tmp_path / "half") < SAME
+    assert against_torch(tmp_path / "half", half, drive, 20).max() < SAME
+    assert against_torch(tmp_path / "half", whole, drive, 20).max() > 100 * SAME
 
 
 def altered(shipped, tmp_path, change):
