@@ -123,9 +123,14 @@ def _search_path(folder: str) -> str:
 
 
 def compose_settings(verb: str, overrides: list[str]) -> DictConfig:
-    """The settings of `learnfilter VERB OVERRIDES`, not yet checked."""
-    with initialize_config_dir(version_base="1.3", config_dir=str(data_dir("configs"))):
-        return with_conditions(compose(verb, overrides), [o for o in overrides if o.startswith("hydra.")])
+    """The settings of `learnfilter VERB OVERRIDES`, not yet checked; within a job of a sweep too."""
+    running = GlobalHydra.instance().hydra
+    GlobalHydra.instance().clear()
+    try:
+        with initialize_config_dir(version_base="1.3", config_dir=str(data_dir("configs"))):
+            return with_conditions(compose(verb, overrides), [o for o in overrides if o.startswith("hydra.")])
+    finally:
+        GlobalHydra.instance().hydra = running
 
 
 def with_conditions(composed: DictConfig, overrides: list[str]) -> DictConfig:
@@ -138,11 +143,17 @@ def with_conditions(composed: DictConfig, overrides: list[str]) -> DictConfig:
     names = composed.get("conditions")
     if not isinstance(names, ListConfig):
         return composed
-    if list(names) == ["all"]:
-        names = GlobalHydra.instance().config_loader().get_group_options("condition")
-    parts = {str(name): [part for part in str(name).split("+") if part != BASE] for name in names}
+    loader = GlobalHydra.instance().config_loader()
+    known = loader.get_group_options("condition", config_name="conditions", overrides=overrides)
+    parts = {str(name): str(name).split("+") for name in (known if list(names) == ["all"] else names)}
+    for part in (part for own in parts.values() for part in own):
+        if part not in known:
+            expected = " or ".join(["all", *known])
+            raise ConfigError("no such condition", place="conditions", expected=expected, got=part)
     composed.conditions = {
-        name: compose("conditions", [*overrides, f"condition=[{','.join(own)}]"]).condition
+        name: compose(
+            "conditions", [*overrides, f"condition=[{','.join(part for part in own if part != BASE)}]"]
+        ).condition
         for name, own in parts.items()
     }
     return composed

@@ -127,13 +127,12 @@ def judge_models(
     """Run the study, write its rows as Parquet, and decide.
 
     Args:
-        models: of a training run, the learned one among them.
+        models: those to compare, see `compared`.
         subject: unseen sites with drives.
         study: how they are judged.
         folder: gets rows.jsonl and rows.parquet.
         seed: of the bootstrap.
     """
-    models = _chosen(models, study.models)
     contenders: list[Contender] = [*contenders_of(models, study.hide_colour)]
     if study.oracle:
         contenders.append(Oracle())
@@ -163,8 +162,12 @@ def judge_models(
     )
 
 
-def _chosen(models: dict[str, Stored], names: Sequence[str] | None) -> dict[str, Stored]:
-    """The models that a study compares: the learned one, and at least one analytic one."""
+def compared(models: dict[str, Stored], names: Sequence[str] | None) -> dict[str, Stored]:
+    """The models that a study compares: the learned one, and at least one analytic one.
+
+    Raises:
+        ConfigError: a name the run does not have, or too few.
+    """
     chosen = models if names is None else {name: models[name] for name in names if name in models}
     good = (names is None or len(chosen) == len(names)) and LEARNED in chosen and len(chosen) > 1
     hold("study.models", good, f"{LEARNED} and some of {', '.join(models)}", names)

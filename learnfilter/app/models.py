@@ -8,6 +8,7 @@ from typing import Any, NamedTuple
 from omegaconf import OmegaConf
 
 from learnfilter.ablation.study import Filter
+from learnfilter.app.command import compose_settings
 from learnfilter.app.config import typed
 from learnfilter.app.lattices import Lattices, build_lattices
 from learnfilter.app.verb_settings import TrainConfig
@@ -87,7 +88,7 @@ def stored(run: Path, made_with: TrainConfig) -> dict[str, Stored]:
         motion.load_state_dict(
             {k.removeprefix("motion."): v for k, v in tensors.items() if k.startswith("motion.")}
         )
-        lattices = build_lattices(made_with, facts["grid"])
+        lattices = build_lattices(made_with, facts.get("grid"))
         model = rebuild(lattices.layout, facts["model"], own)
         found[facts["name"]] = Stored(facts["name"], model, motion, lattices, facts)
     if not found:
@@ -131,4 +132,7 @@ def settings_of(run: Path) -> TrainConfig:
             expected="a run of `learnfilter train` or demo",
         )
     known = {key: composed[key] for key in TrainConfig.__dataclass_fields__ if key in composed}
-    return typed(OmegaConf.create(known), TrainConfig)
+    # an earlier version knew fewer settings: those it did not know are as they are by default
+    whole = compose_settings("train", [])
+    whole.merge_with(known)
+    return typed(whole, TrainConfig)

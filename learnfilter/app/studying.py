@@ -140,11 +140,6 @@ def recorded_place(
     drives, units = [], []
     for path in paths:
         whole = read_drive(path, strip, depth_kind=settings.strip.depth_kind)
-        if whole.strip.columns != strip.columns:
-            raise DriveError(
-                "other sensor than the models'", file=whole.name,
-                expected=f"{strip.columns} columns", got=whole.strip.columns,
-            )  # fmt: skip
         for start, end in _stretches(len(whole), blocks, every_start):
             drives.append(whole.part(start, end))
             units.append(f"{whole.name}, to row {end}")

@@ -7,6 +7,7 @@ from pathlib import Path
 
 from learnfilter.app.board import Board
 from learnfilter.app.build import build_plan
+from learnfilter.app.grounds import Place
 from learnfilter.app.lattices import Lattices
 from learnfilter.app.models import Stored, settings_of, store, stored
 from learnfilter.app.progress import progress
@@ -24,18 +25,23 @@ def as_started(settings: TrainConfig, start: Path) -> TrainConfig:
     return replace(settings, **kept)
 
 
-def tune_models(settings: TrainConfig, folder: Path) -> dict[str, Stored]:
+def tuning_place(settings: TrainConfig) -> Place:
+    """The recorded drives that `drives` and `blocks` name, on the plan they were driven on."""
+    return recorded_place(settings, build_plan(settings.site), settings.drives, settings.blocks, False)
+
+
+def tune_models(settings: TrainConfig, place: Place, folder: Path) -> dict[str, Stored]:
     """Tune and store all models of the run that `start` names.
 
     The weights that do best on the same drives are kept, so only other drives can judge them.
 
     Args:
         settings: of the verb, see `as_started`.
+        place: recorded drives.
         folder: of the run.
     """
     assert settings.start is not None
     models, recipe = stored(Path(settings.start), settings), settings.train
-    place = recorded_place(settings, build_plan(settings.site), settings.drives, settings.blocks, False)
     cache, tuned = Path(settings.runs) / "cache", {}
     common = next(iter(models.values())).lattices
 

@@ -147,7 +147,10 @@ def without_knowledge(birth: Birth, rng: np.random.Generator) -> Birth:
             expected=np.vstack([smooth(ranges.expected[:-1]), ranges.expected[-1:]]),  # unsure stays silent
             bias=np.zeros_like(ranges.bias),
         ),
-        colour_factors=colours and colours._replace(root=rng.normal(size=colours.root.shape)),
+        colour_factors=colours
+        and colours._replace(
+            root=rng.normal(size=colours.root.shape), background=np.zeros_like(colours.background)
+        ),
         range_exponent=FAINT,
         colour_exponent=FAINT,
     )

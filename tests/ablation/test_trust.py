@@ -85,13 +85,14 @@ def test_the_worst_gap_of_coverage_is_that_of_the_worst_level(rank, gap):
 
 
 def test_an_interval_of_coverage_rests_on_sites_and_not_on_drives():
-    """Two sites at gaps of 0.5 and 0.3: resampled whole, so one of both alone is among the draws."""
-    rows = [row(n, [0.5] * 10, [1] * 10, [0.0] * 10, site="a") for n in range(4)]
-    rows += [row(n, [0.5] * 10, [1] * 10, [0.0] * 8 + [0.6] * 2, site="b") for n in range(4, 8)]
+    """Eight sites at a gap of 0.5 and eight at 0.3, four drives on each: 0.4, and quantiles of a binomial."""
+    ranks = ([0.0] * 10, [0.0] * 8 + [0.6] * 2)  # sets of 0.5 hold all ten truths, or eight
+    rows = [row(n, [0.5] * 10, [1] * 10, ranks[n // 4 % 2], site=f"site {n // 4}") for n in range(64)]
     found = judged(rows).coverage
-    # sets of 0.5 hold 36 of 40 truths; those of one site alone hold 20 of 20 or 16 of 20
-    assert (found.value, found.low, found.high) == pytest.approx((0.4, 0.3, 0.5))
-    assert found.n == 2
+    low, high = 0.3 + 0.2 * stats.binom.ppf((0.025, 0.975), 16, 0.5) / 16
+    assert (found.value, found.n) == (pytest.approx(0.4), 16)
+    # a step of the binomial is 0.0125, which 200 resamples may miss by; 64 drives apart would give 0.025 less
+    assert (found.low, found.high) == pytest.approx((low, high), abs=0.015)
 
 
 def test_metres_until_lock_are_censored_at_the_cap():

@@ -20,6 +20,7 @@ from learnfilter.app.verbs import VERBS
 from learnfilter.drives.tables import read_drive
 from learnfilter.export.check import compare
 from learnfilter.plan import read_plan
+from learnfilter.training.checkpoint import load_tensors
 from tests.app.tiny import OFFICE, python
 
 pytestmark = pytest.mark.slow
@@ -245,17 +246,26 @@ def tuned(demo, office, tmp_path_factory) -> Path:
     return runs / "train" / "tuned"
 
 
-def test_tuning_on_recorded_drives_leaves_the_models_of_the_run_it_went_on_from(demo, tuned):
-    """The same names, tensors and sizes; the drive's own way of moving has been learned from."""
+def test_tuning_on_recorded_drives_writes_the_models_it_went_on_from(demo, tuned):
+    """The same names, tensors and sizes."""
     before, after = (
         {path.stem: load_file(path) for path in run.glob("models/*.safetensors")} for run in (demo, tuned)
     )
     assert before.keys() == after.keys() >= {*MODELS}
     for name, tensors in before.items():
-        assert {key: value.shape for key, value in tensors.items()} == {
-            key: value.shape for key, value in after[name].items()
-        }
-        assert any(not np.array_equal(value, after[name][key]) for key, value in tensors.items()), name
+        sizes = [{key: value.shape for key, value in each.items()} for each in (tensors, after[name])]
+        assert sizes[0] == sizes[1]
+
+
+def test_tuning_changes_the_weights_of_those_models_that_it_makes_better(demo, tuned):
+    """A model that only got worse on the drive keeps the weights it came with; not all of them do."""
+    changed, better = {}, {}
+    for path in tuned.glob("models/*.safetensors"):
+        came = load_file(demo / "models" / path.name)
+        changed[path.stem] = any(not np.array_equal(v, came[key]) for key, v in load_file(path).items())
+        (stage,) = load_tensors(path)[1]["stages"].values()
+        better[path.stem] = stage["best_iteration"] > 0
+    assert changed == better and any(changed.values())
 
 
 def test_tuning_keeps_sensor_and_lattice_of_the_run_it_went_on_from(demo, tuned):

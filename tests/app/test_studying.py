@@ -1,7 +1,5 @@
 """Recorded drives as a study takes them: whole, or cut to blocks of rows."""
 
-from pathlib import Path
-
 import numpy as np
 import pytest
 
@@ -117,7 +115,7 @@ def test_a_drive_of_another_sensor_is_refused(table):
 
 def test_nobody_knows_all_of_a_recorded_drive(table):
     """The oracle needs a simulation."""
-    asked = judging("study.oracle=true", f"drives=[{Path(table)}]")
+    asked = judging("study.oracle=true", f"drives=[{table}]")
     with pytest.raises(ConfigError) as raised:
         study_subject(training(), asked.site, asked.conditions, asked.study, 0, asked.drives)
     assert raised.value.place == "study.oracle"

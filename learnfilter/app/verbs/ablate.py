@@ -17,7 +17,7 @@ from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
-from learnfilter.app.judging import judge_models, watch_first
+from learnfilter.app.judging import compared, judge_models, watch_first
 from learnfilter.app.models import LEARNED, settings_of, stored
 from learnfilter.app.pages import (
     DEPTH_ONLY,
@@ -43,7 +43,7 @@ def run(settings: AblateConfig) -> dict[str, Any]:
     made_with = replace(
         settings_of(Path(settings.model)), runs=settings.runs
     )  # the cache is ours, not the trainer's
-    models = stored(Path(settings.model), made_with)
+    models = compared(stored(Path(settings.model), made_with), settings.study.models)
     subject = study_subject(
         made_with, settings.site, settings.conditions, settings.study, settings.seed, settings.drives,
         settings.blocks,

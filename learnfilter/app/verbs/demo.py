@@ -19,7 +19,7 @@ from typing import Any
 from learnfilter.app.build import FILE_OPTIONS, build_plan, check_invented
 from learnfilter.app.exporting import export_bundle
 from learnfilter.app.grounds import Place
-from learnfilter.app.judging import Judgement, judge_models, watch_first
+from learnfilter.app.judging import Judgement, compared, judge_models, watch_first
 from learnfilter.app.models import LEARNED, Stored
 from learnfilter.app.pages import (
     DEPTH_ONLY,
@@ -62,7 +62,9 @@ def run(settings: DemoConfig) -> dict[str, Any]:
     subject = study_subject(
         made_with, site, {"as configured": settings.condition}, settings.study, settings.seed
     )
-    found = judge_models(models, subject, settings.study, folder.path, settings.seed)
+    found = judge_models(
+        compared(models, settings.study.models), subject, settings.study, folder.path, settings.seed
+    )
     first = next(place for _, place in subject.places())
     shipped = models[LEARNED] if found.verdict.ship == "learned" else models[found.analytic]
     bundle = export_bundle(made_with, shipped, first.plan, folder.path / "bundle", found.summary())

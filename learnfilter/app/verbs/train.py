@@ -21,21 +21,23 @@ from learnfilter.app.models import LEARNED
 from learnfilter.app.pages import provenance, settings_text, training_charts
 from learnfilter.app.runs import open_run
 from learnfilter.app.training import train_models
-from learnfilter.app.tuning import as_started, tune_models
+from learnfilter.app.tuning import as_started, tune_models, tuning_place
 from learnfilter.app.verb_settings import TrainConfig
 from learnfilter.report import Column, RunPage, Table, write_page
 
 
 def run(settings: TrainConfig) -> dict[str, Any]:
     """Do the verb; returns the summary."""
+    name = settings.name or "default"
     if settings.start is None:
         check_invented(settings.site)
+        folder = open_run("train", name, settings)
+        models = train_models(settings, folder.path)
     else:
         settings = as_started(settings, Path(settings.start))
-    folder = open_run("train", settings.name or "default", settings)
-    models = (
-        train_models(settings, folder.path) if settings.start is None else tune_models(settings, folder.path)
-    )
+        place = tuning_place(settings)
+        folder = open_run("train", name, settings)
+        models = tune_models(settings, place, folder.path)
     validation = {name: model.facts["validation"] for name, model in models.items()}
     write_page(
         RunPage(
