@@ -1,15 +1,16 @@
-"""Go on from a training run: tune all of its models on recorded drives."""
+"""Go on from a training run: tune its models on recorded drives."""
 
 from __future__ import annotations
 
 from dataclasses import replace
 from pathlib import Path
 
+from learnfilter.ablation.verdict import choose_analytic
 from learnfilter.app.board import Board
 from learnfilter.app.build import build_plan
 from learnfilter.app.grounds import Place
 from learnfilter.app.lattices import Lattices
-from learnfilter.app.models import Stored, settings_of, store, stored
+from learnfilter.app.models import LEARNED, Stored, settings_of, store, stored
 from learnfilter.app.progress import progress
 from learnfilter.app.studying import recorded_place
 from learnfilter.app.training import config_hash, filter_settings, stage_settings
@@ -31,7 +32,7 @@ def tuning_place(settings: TrainConfig) -> Place:
 
 
 def tune_models(settings: TrainConfig, place: Place, folder: Path) -> dict[str, Stored]:
-    """Tune and store all models of the run that `start` names.
+    """Tune and store the learned model of the run that `start` names, and its best analytic one.
 
     The weights that do best on the same drives are kept, so only other drives can judge them.
 
@@ -41,7 +42,7 @@ def tune_models(settings: TrainConfig, place: Place, folder: Path) -> dict[str, 
         folder: of the run.
     """
     assert settings.start is not None
-    models, recipe = stored(Path(settings.start), settings), settings.train
+    models, recipe = _worth_tuning(stored(Path(settings.start), settings)), settings.train
     cache, tuned = Path(settings.runs) / "cache", {}
     common = next(iter(models.values())).lattices
 
@@ -62,3 +63,9 @@ def tune_models(settings: TrainConfig, place: Place, folder: Path) -> dict[str, 
             facts |= {"seed": settings.seed, "config": config_hash(settings)}
             tuned[name] = store(folder / "models", name, trained, model.lattices, facts)
     return tuned
+
+
+def _worth_tuning(models: dict[str, Stored]) -> dict[str, Stored]:
+    """The learned model, and the analytic one with the fewest nats on the drives it was chosen by."""
+    analytic = {name: model.facts["validation"] for name, model in models.items() if not model.learned}
+    return {name: models[name] for name in (choose_analytic(analytic), LEARNED)}

@@ -33,10 +33,10 @@ from learnfilter.core.seeds import stream  # noqa: E402
 
 SEEDS = (0, 1, 2)
 RUNS = Path("runs/measure-evidence")
-SITES, DRIVES, ROWS = 48, 1, 44
+SITES, DRIVES, ROWS = 32, 1, 44
 ORACLE_SITES = 24
 AS_TRAINED, NEW_LAYOUT, PARKED = "as-trained", "unseen-layout", "parked"
-LEAST_GAP = 0.05
+GAP_MARKS, LEAST_GAP = (1, 2, 4, 8), 0.05
 LOG = Path("../shared/data/logs/lab-a.parquet")
 # The picture's grey levels and place are in the note beside it.
 ON_LOG = (
@@ -61,7 +61,8 @@ def main() -> None:
     rows = studied(folders, "study", ("conditions=[all]", f"study.sites={SITES}"))
     known = studied(
         folders, "oracle",
-        (f"conditions=[{AS_TRAINED},{NEW_LAYOUT}]", f"study.sites={ORACLE_SITES}", "study.oracle=true"),
+        (f"conditions=[{AS_TRAINED},{NEW_LAYOUT}]", f"study.sites={ORACLE_SITES}",
+         f"study.marks={list(GAP_MARKS)}", "study.oracle=true"),
     )  # fmt: skip
     figures = {
         "train_minutes": spread([minutes for _, minutes in trained]),
@@ -171,7 +172,7 @@ def gaps(rows: Sequence[Row]) -> dict[str, Any]:
             own = under(rows, name)
             order, units = drives_of(own)
             table = {
-                who: np.stack([sign * column(own, who, f"{measure}_{m}", order) for m in (1, 2, 4, 8)])
+                who: np.stack([sign * column(own, who, f"{measure}_{m}", order) for m in GAP_MARKS])
                 for who in ("matcher", "analytic", "oracle")
             }
 
@@ -187,7 +188,7 @@ def gaps(rows: Sequence[Row]) -> dict[str, Any]:
             )
         order, _ = drives_of(rows)
         out[f"oracle_{measure}_1_2_4_8"] = [
-            float(np.nanmean(column(rows, "oracle", f"{measure}_{m}", order))) for m in (1, 2, 4, 8)
+            float(np.nanmean(column(rows, "oracle", f"{measure}_{m}", order))) for m in GAP_MARKS
         ]
     return out
 

@@ -4,8 +4,8 @@ Invents sites (`site.families`) under `condition`, drives on them with your `str
 the analytic models through the filter; trains the matcher, born from the best of them, on single strips
 (`train.matching`) and through the filter (`train.filtering`). The weights that do best on held-out sites
 are kept. Watch it: tensorboard --logdir runs/train. A killed run is taken up again by the same command
-and ends with the same weights. With start=RUN, site.file=PLAN and drives=[...] all models of that run are
-tuned through the filter on your recorded drives (`train.recorded`); judge them on rows they have not seen.
+and ends with the same weights. With start=RUN, site.file=PLAN and drives=[...] the matcher of that run and
+its best analytic model are tuned through the filter on your recorded drives (`train.recorded`); judge them on rows they have not seen.
 
 Example:
   learnfilter train name=cart strip=depth-colour-90 seed=1
