@@ -19,7 +19,7 @@ from learnfilter.core.poses import compose
 from learnfilter.drives.metrics import WITHIN_M, WITHIN_RAD, first_lock, located, travelled
 from learnfilter.filtering.course import Course, Ground
 from learnfilter.filtering.motion import MotionModel
-from learnfilter.filtering.trace import Trace, trace
+from learnfilter.filtering.trace import Memory, Trace, trace
 from learnfilter.observe.contract import ObservationModel
 
 MARKS = (1, 2, 4, 8, 16, 32)  # strips after which a filter is judged, where nothing else is asked
@@ -95,6 +95,7 @@ class Filter(NamedTuple):
         ground = arena.others.get(self.lattice, arena.ground)
         with torch.no_grad():
             features = self.model.read(ground.site)
+        memory: Memory = {}  # recorded drives are cut at every start, and share their strips
 
         def run(drive: int, strips: int) -> Trace:
             course = ground.courses[drive]
@@ -103,8 +104,9 @@ class Filter(NamedTuple):
                 course = course._replace(steps=course.steps._replace(strips=bare))
             scored = arena.ground.courses[drive].scored_on(arena.ground.site)
             return trace(
-                self.model, self.motion, ground.site, course, self.floor, strips, features, scored=scored
-            )
+                self.model, self.motion, ground.site, course, self.floor, strips, features, scored=scored,
+                memory=memory,
+            )  # fmt: skip
 
         return run
 

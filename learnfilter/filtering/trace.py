@@ -47,19 +47,29 @@ class Trace(NamedTuple):
 TOGETHER = 16  # strips scored at once: each pass over a site's table then serves many
 
 
+Memory = dict[bytes, Tensor]  # what a model said of the last strips on a site, [n h] by a strip's bytes
+
+
 def _in_order(
-    model: ObservationModel, course: Course, count: int, features: object
+    model: ObservationModel, course: Course, count: int, features: object, memory: Memory
 ) -> Callable[[int], Tensor]:
-    """step -> [1 n h], for steps asked for in order."""
-    held: dict[int, Tensor] = {}
+    """step -> [1 n h], for steps asked for in order; strips in memory are not scored again."""
+    strips = course.steps.strips
+    keys = [
+        depth.numpy().tobytes() + rgb.numpy().tobytes()
+        for depth, rgb in zip(strips.depth_m[:count], strips.rgb[:count], strict=True)
+    ]
 
     def at(step: int) -> Tensor:
-        if step not in held:
-            held.clear()
-            together = slice(step, min(step + TOGETHER, count))
-            scores = model.log_likelihood(course.steps.strips.at(together), features)
-            held.update((step + k, score[None]) for k, score in enumerate(scores))
-        return held[step]
+        if keys[step] not in memory:
+            ahead = range(step, min(step + TOGETHER, count))
+            unknown = [k for k in ahead if keys[k] not in memory]
+            scores = model.log_likelihood(strips.at(torch.tensor(unknown)), features)
+            memory.update((keys[k], score) for k, score in zip(unknown, scores, strict=True))
+        score = memory[keys[step]][None]
+        while len(memory) > 2 * TOGETHER:
+            memory.pop(next(iter(memory)))
+        return score
 
     return at
 
@@ -75,6 +85,7 @@ def trace(
     features: object = None,
     keep_marginals: bool = False,
     scored: Scored | None = None,
+    memory: Memory | None = None,
 ) -> Trace:
     """Filter the first `steps` strips of a course.
 
@@ -85,6 +96,7 @@ def trace(
         steps: at most this many strips; None for all.
         features: `model.read(site)`, if at hand.
         keep_marginals: keep the belief's plane after each strip, for pictures.
+        memory: of this model on this site, where drives share strips; gets what is scored.
         scored: another lattice on which the true pose's probability is read; None for the site's own.
     """
     features = model.read(site) if features is None else features
@@ -98,7 +110,7 @@ def trace(
     states = rollout(
         start(lattice, 1),
         course.steps.odometry[:count, None],
-        _in_order(model, course, count, features),
+        _in_order(model, course, count, features, {} if memory is None else memory),
         lattice,
         motion,
         floor,

@@ -5,7 +5,8 @@ the analytic models through the filter; trains the matcher, born from the best o
 (`train.matching`) and through the filter (`train.filtering`). The weights that do best on held-out sites
 are kept. Watch it: tensorboard --logdir runs/train. A killed run is taken up again by the same command
 and ends with the same weights. With start=RUN, site.file=PLAN and drives=[...] the matcher of that run and
-its best analytic model are tuned through the filter on your recorded drives (`train.recorded`); judge them on rows they have not seen.
+its best analytic model are tuned through the filter on your recorded drives (`train.recorded`); judge
+them on rows they have not seen.
 
 Example:
   learnfilter train name=cart strip=depth-colour-90 seed=1
