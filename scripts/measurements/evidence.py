@@ -33,7 +33,8 @@ from learnfilter.core.seeds import stream  # noqa: E402
 
 SEEDS = (0, 1, 2)
 RUNS = Path("runs/measure-evidence")
-SITES, DRIVES, ROWS = 32, 1, 44
+# As trained and parked are judged on more sites: what is said of confidence there asks for many strips.
+USUAL_SITES, SHIFTED_SITES, DRIVES, ROWS = 32, 16, 1, 44
 ORACLE_SITES = 24
 AS_TRAINED, NEW_LAYOUT, PARKED = "as-trained", "unseen-layout", "parked"
 GAP_MARKS, LEAST_GAP = (1, 2, 4, 8), 0.05
@@ -58,7 +59,12 @@ def main() -> None:
     """Measure everything and print it."""
     trained = [train("seed", seed) for seed in SEEDS]
     folders = [folder for folder, _ in trained]
-    rows = studied(folders, "study", ("conditions=[all]", f"study.sites={SITES}"))
+    shifted = sorted(path.stem for path in Path("configs/condition").glob("*.yaml"))
+    shifted = [name for name in shifted if name not in (AS_TRAINED, PARKED)]
+    rows = [
+        *studied(folders, "usual", (f"conditions=[{AS_TRAINED},{PARKED}]", f"study.sites={USUAL_SITES}")),
+        *studied(folders, "shifted", (f"conditions=[{','.join(shifted)}]", f"study.sites={SHIFTED_SITES}")),
+    ]
     known = studied(
         folders, "oracle",
         (f"conditions=[{AS_TRAINED},{NEW_LAYOUT}]", f"study.sites={ORACLE_SITES}",

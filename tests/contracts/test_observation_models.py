@@ -9,11 +9,13 @@ import torch
 from torch.testing import assert_close
 
 from learnfilter.core.errors import InputError
+from learnfilter.core.seeds import stream
 from learnfilter.core.strip import Strip, even_strip, lay_on_ring
 from learnfilter.observe.contract import Strips
 from learnfilter.observe.describe import describe, rebuild
 from learnfilter.plan.readers import read_plan
 from learnfilter.render import cast_rings
+from learnfilter.sim import make_plan
 from tests.contracts import small
 from tests.contracts.small import LAYOUT, MODELS, PER_HEADING, TWO_LOOKS, altered, score, small_site, strips
 
@@ -231,3 +233,14 @@ def test_a_mirror_image_is_no_twin(name):
     )
     scores = score(MODELS[name](layout), seen, site)[0]
     assert abs(float(scores[cell, heading] - scores[mirrored, other])) > 0.05
+
+
+@pytest.mark.parametrize("name", RING_READERS)
+def test_twin_wings_are_never_told_apart(name):
+    """A plan that a half turn leaves as it is (check_values R9, R10): every pose and its twin are equally
+    likely, whatever the strip, so the belief stays split and nobody may claim to know the wing."""
+    site = small.render(make_plan("wings", stream(0, "wings"), 12.0, 10.0))
+    scores = score(MODELS[name](LAYOUT), strips(), site)
+    twins = scores.flip(1).roll(LAYOUT.bearings // LAYOUT.bearings_per_heading // 2, dims=2)
+    assert_close(scores, twins, **FLOAT32)
+    assert float(scores.std()) > 0.01
