@@ -80,5 +80,8 @@ def _over_sites(
         statistic([row for k in rng.integers(len(groups), size=len(groups)) for row in groups[int(k)]])
         for _ in range(RESAMPLES if len(groups) > 1 else 0)
     ]
-    low, high = np.nanpercentile(drawn, (2.5, 97.5)) if drawn else (np.nan, np.nan)
-    return Interval(statistic(rows), float(low), float(high), len(groups))
+    value, known = statistic(rows), np.array(drawn)[np.isfinite(drawn)]
+    if np.isnan(value) or not len(known):
+        return Interval(value, float("nan"), float("nan"), len(groups))
+    low, high = np.percentile(known, (2.5, 97.5))
+    return Interval(value, float(low), float(high), len(groups))
