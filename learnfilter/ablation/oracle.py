@@ -13,7 +13,6 @@ The belief is a list of poses that matter: a few hundred of millions after one s
 from __future__ import annotations
 
 import math
-import time
 from collections.abc import Iterator
 from typing import NamedTuple
 
@@ -27,11 +26,10 @@ from learnfilter.ablation.known import FINER, Known
 from learnfilter.ablation.sensing import strip_log_likelihood
 from learnfilter.ablation.surroundings import cast_world, rough_scores
 from learnfilter.core.errors import ImpossibleEvidence
-from learnfilter.core.estimate import credible_rank, entropy, modes
 from learnfilter.core.grid import PoseGrid
-from learnfilter.core.seeds import stream
+from learnfilter.filtering.course import Scored
 from learnfilter.filtering.motion import shift_weights
-from learnfilter.filtering.trace import Trace
+from learnfilter.filtering.trace import Trace, write_down
 
 # Share of belief spread over all live poses when it is scored, as filters in the study keep one too: a
 # drive on which the oracle is wrong shall not outweigh all others.
@@ -81,25 +79,13 @@ def follow(
         poses: [s 3] true sensor poses as they read on the plan.
         steps: at most this many strips; None for all.
     """
-    grid, ranks = common.grid, stream(0, "rank", name)
+    grid = common.grid
     row, column = grid.cell_of(poses[:, 0], poses[:, 1])
     cell = common.stands_for[row.clip(0, grid.rows - 1), column.clip(0, grid.columns - 1)]
-    heading = grid.heading_of(poses[:, 2])
+    scored = Scored(grid, grid.heading_of(poses[:, 2]), *np.divmod(cell, grid.columns))
     even = FLOOR * common.live / (common.live.sum() * grid.headings)
-    columns: list[tuple] = []
-    clock = time.perf_counter()
-    for step, state in enumerate(beliefs(known, len(poses) if steps is None else steps)):
-        belief = (1 - FLOOR) * sum_to(state, common) + even
-        took = time.perf_counter() - clock
-        mode = modes(belief, grid)[0]
-        true = (heading[step], *divmod(cell[step], grid.columns))
-        log_truth = np.log(belief[true])
-        columns.append(
-            (mode.pose, mode.mass, log_truth, credible_rank(belief, true, ranks), entropy(belief), took)
-        )
-        clock = time.perf_counter()
-    estimate, mass, log_truth, rank, nats, seconds = (np.array(c) for c in zip(*columns, strict=True))
-    return Trace(estimate, mass, log_truth, rank, nats, float(seconds.mean()), None)
+    states = beliefs(known, len(poses) if steps is None else steps)
+    return write_down(((1 - FLOOR) * sum_to(state, common) + even for state in states), grid, scored, name)
 
 
 def beliefs(known: Known, steps: int) -> Iterator[Belief]:

@@ -4,10 +4,9 @@ The unit of evidence is the site: poses of one drive, and drives of one site, re
 so intervals resample sites first and drives within them (hierarchical bootstrap), never strips.
 
 Sources: Wilson 1927 (interval of a share; Newcombe 1998 for its behaviour); McNemar 1947, exact
-binomial form; Holm 1979 (several comparisons); Fisher 1935 (sign flips); Efron and Tibshirani 1993
+binomial form; Holm 1979 (several comparisons); Efron and Tibshirani 1993
 (percentile bootstrap); Davison and Hinkley 1997, ch. 3 (resampling grouped data); Guo et al. 2017
-(binned calibration error); Kumar, Liang and Ma 2019 (its debiased form); Hyndman 1996 (highest-density
-sets) with the randomised rank of Czado, Gneiting and Held 2009 for discrete distributions.
+(binned calibration error); Kumar, Liang and Ma 2019 (its debiased form).
 """
 
 from __future__ import annotations
@@ -74,22 +73,6 @@ def holm(p_values: ArrayLike) -> Floats:
     adjusted = np.empty_like(p)
     adjusted[order] = np.minimum(stepped, 1.0)
     return adjusted
-
-
-def sign_flip(differences: ArrayLike, rng: np.random.Generator, n_resamples: int = 9999) -> float:
-    """Two-sided p-value that paired differences [sites] are symmetric about zero.
-
-    All 2^sites flips are counted where they are no more than `n_resamples`, else so many are drawn.
-    """
-    test = stats.permutation_test(
-        (np.asarray(differences, dtype=float),),
-        lambda d, axis: np.mean(d, axis=axis),
-        permutation_type="samples",
-        vectorized=True,
-        n_resamples=n_resamples,
-        rng=rng,
-    )
-    return float(test.pvalue)
 
 
 def bootstrap(

@@ -165,7 +165,8 @@ def _rows_on(contender: Contender, arena: Arena, marks: Marks, done: set[tuple])
 def _row(seen: Trace, course: Course, arena: Arena, marks: Marks) -> Row:
     """What one drive came to."""
     count = len(seen.estimate)
-    right = _right(seen.estimate, course.poses[:count], arena, marks)
+    poses = course.poses[:count]
+    right, credited = located(seen.estimate, poses), _credited(seen.estimate, poses, arena, marks)
     metres = travelled(course.steps.odometry.numpy())
     lock = first_lock(seen.mass)
     row: Row = {
@@ -180,19 +181,23 @@ def _row(seen: Trace, course: Course, arena: Arena, marks: Marks) -> Row:
     }
     for mark in marks.strips:
         if mark <= count:
-            row[f"located_{mark}"] = float(right[mark - 1])
+            row[f"located_{mark}"] = float(credited[mark - 1])
             row[f"nll_{mark}"] = float(-seen.log_truth[mark - 1])
     return row
 
 
-def _right(estimate: np.ndarray, reference: np.ndarray, arena: Arena, marks: Marks) -> np.ndarray:
-    """[s] whether each estimate is near the reference, or where a symmetric plan turns it to."""
-    right = np.zeros(len(estimate))
-    arm = reference - [*arena.middle, 0.0]
+def _credited(estimate: np.ndarray, poses: np.ndarray, arena: Arena, marks: Marks) -> np.ndarray:
+    """[s] whether each estimate is near the reference, or where a symmetric plan turns it to.
+
+    That is for the located share alone.  Confidence and locks are held to the one true pose: a filter
+    that is sure of one of two poses that nothing can tell apart is too sure.
+    """
+    near = np.zeros(len(estimate))
+    arm = poses - [*arena.middle, 0.0]
     for turn in 2 * np.pi * np.arange(arena.fold) / arena.fold:
         place = compose(np.array([*arena.middle, turn]), arm)
-        right = np.maximum(right, located(estimate, place, marks.within_m, marks.within_rad))
-    return right
+        near = np.maximum(near, located(estimate, place, marks.within_m, marks.within_rad))
+    return near
 
 
 def _rounded(values: np.ndarray) -> list[float]:

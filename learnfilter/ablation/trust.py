@@ -7,7 +7,7 @@ from typing import NamedTuple
 
 import numpy as np
 
-from learnfilter.ablation.statistics import Interval, bootstrap, debiased_calibration_error, wilson
+from learnfilter.ablation.statistics import Interval, bootstrap, coverage, debiased_calibration_error, wilson
 from learnfilter.ablation.study import Row
 from learnfilter.ablation.verdict import drives_of
 
@@ -66,7 +66,7 @@ def _calibration(rows: Sequence[Row]) -> float:
 
 def _coverage(rows: Sequence[Row]) -> float:
     ranks = np.concatenate([row["rank"] for row in rows])
-    return max(abs(float(np.mean(ranks <= level)) - level) for level in LEVELS)
+    return max(abs(coverage(ranks, level).value - level) for level in LEVELS)
 
 
 def _over_sites(

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import NamedTuple
 
@@ -151,7 +151,6 @@ def drives_on(
     rows: int,
     seed: int,
     radius_m: float,
-    tick: Callable[[int, int, str], None] = lambda *_: None,
 ) -> Place:
     """Simulated drives on a plan of the user's, each on another day."""
     made, worlds = [], []
@@ -162,5 +161,4 @@ def drives_on(
         rng = stream(seed, "drives on", day, "drive")
         made.append(rehearse(world, strip, rng, rows, f"{plan.name}-{day}"))
         worlds.append(world)
-        tick(day + 1, drives, "")
     return Place(plan, tuple(made), tuple(worlds))

@@ -93,8 +93,8 @@ def trust_table(found: Judgement) -> Table:
         for t in found.trust
     )  # fmt: skip
     note = (
-        "Calibration of 'the pose is near the estimate' over every strip, debiased; coverage of 50, 90 and "
-        "95 % credible sets, worst; metres until lock, the drive's length where it never locked."
+        "Calibration of 'within 0.5 m and 15 degrees of the estimate' over every strip, debiased; coverage "
+        "of 50, 90 and 95 % credible sets, worst; metres until lock, the drive's length if it never locked."
     )
     return Table("How far each model's confidence can be believed", columns, rows, note)
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from typing import NamedTuple
 
 import numpy as np
@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from torch import Tensor
 
 from learnfilter.core.estimate import credible_rank, entropy, modes
+from learnfilter.core.grid import PoseGrid
 from learnfilter.core.regrid import regrid
 from learnfilter.core.seeds import stream
 from learnfilter.filtering.course import Course, Scored
@@ -44,6 +45,7 @@ class Trace(NamedTuple):
     marginals: NDArray[np.float32] | None
 
 
+TINY = 1e-30  # a belief of exactly zero at the truth costs 69 nats instead of infinitely many
 TOGETHER = 16  # strips scored at once: each pass over a site's table then serves many
 
 
@@ -96,17 +98,12 @@ def trace(
         steps: at most this many strips; None for all.
         features: `model.read(site)`, if at hand.
         keep_marginals: keep the belief's plane after each strip, for pictures.
-        memory: of this model on this site, where drives share strips; gets what is scored.
         scored: another lattice on which the true pose's probability is read; None for the site's own.
+        memory: of this model on this site, where drives share strips; gets what is scored.
     """
     features = model.read(site) if features is None else features
     lattice = lattice_of(site)
     count = course.length if steps is None else min(steps, course.length)
-    scored = scored or course.scored_on(site)
-    ranks = stream(0, "rank", course.name)
-    columns: list[tuple] = []
-    planes = []
-    clock = time.perf_counter()
     states = rollout(
         start(lattice, 1),
         course.steps.odometry[:count, None],
@@ -115,25 +112,33 @@ def trace(
         motion,
         floor,
     )
-    for step, state in enumerate(states):
+    beliefs = (state.belief[0].numpy() for state in states)
+    return write_down(beliefs, site.grid, scored or course.scored_on(site), course.name, keep_marginals)
+
+
+def write_down(
+    beliefs: Iterator[NDArray], grid: PoseGrid, scored: Scored, name: str, keep_marginals: bool = False
+) -> Trace:
+    """Read off each belief what a trace holds.
+
+    Args:
+        beliefs: [h r c] after each strip, made one by one; the time that takes is the filter's.
+        grid: their lattice.
+        scored: the lattice on which the true pose's probability is read.
+        name: of the drive; randomised ranks are drawn under it.
+        keep_marginals: see `trace`.
+    """
+    ranks, columns, planes = stream(0, "rank", name), [], []
+    clock = time.perf_counter()
+    for step, belief in enumerate(beliefs):
         took = time.perf_counter() - clock
-        belief = state.belief[0].numpy()
-        mode = modes(belief, site.grid)[0]
-        common, at = regrid(belief, site.grid, scored.grid), scored.pose(step)
-        log_truth = np.log(max(float(common[at]), 1e-30))
-        columns.append(
-            (mode.pose, mode.mass, log_truth, credible_rank(common, at, ranks), entropy(belief), took)
-        )
+        mode = modes(belief, grid)[0]
+        common, at = regrid(belief, grid, scored.grid), scored.pose(step)
+        log_truth, rank = np.log(max(float(common[at]), TINY)), credible_rank(common, at, ranks)
+        columns.append((mode.pose, mode.mass, log_truth, rank, entropy(belief), took))
         if keep_marginals:
             planes.append(common.sum(0))
         clock = time.perf_counter()
-    estimate, mass, log_truth, rank, nats, seconds = (np.array(c) for c in zip(*columns, strict=True))
-    return Trace(
-        estimate,
-        mass,
-        log_truth,
-        rank,
-        nats,
-        float(seconds.mean()),
-        np.stack(planes) if keep_marginals else None,
-    )
+    estimate, mass, log_truths, all_ranks, nats, seconds = (np.array(c) for c in zip(*columns, strict=True))
+    marginals = np.stack(planes) if keep_marginals else None
+    return Trace(estimate, mass, log_truths, all_ranks, nats, float(seconds.mean()), marginals)

@@ -82,6 +82,12 @@ class StageResult(NamedTuple):
     best_score: float
     history: list[tuple[int, float, float]]
 
+    def after(self, done: int, loss: float, score: float) -> StageResult:
+        """The same stage, validated once more."""
+        history = [*self.history, (done, loss, score)]
+        best = (done, score) if score < self.best_score else (self.best_iteration, self.best_score)
+        return StageResult(done, *best, history)
+
 
 def run_stage(
     settings: StageSettings,
@@ -111,46 +117,46 @@ def run_stage(
         return StageResult(0, 0, validate().score, [])
     parameters = [p for m in modules.values() for p in m.parameters() if p.requires_grad]
     optimiser = torch.optim.Adam(parameters, lr=settings.learning_rate)
-    checkpoint, best_path = (
-        folder / f"{settings.name}.safetensors",
-        folder / f"{settings.name}-best.safetensors",
-    )
-    history: list[tuple[int, float, float]] = []
-    first, best_at, best = 0, 0, math.inf
-
-    def keep(done: int) -> None:
-        facts = {"iteration": done, "best_iteration": best_at, "best_score": best, "history": history}
-        save_tensors(checkpoint, pack(modules, optimiser), facts)
-
+    checkpoint = folder / f"{settings.name}.safetensors"
+    best_path = folder / f"{settings.name}-best.safetensors"
     if checkpoint.exists():
         tensors, facts = load_tensors(checkpoint)
         unpack(tensors, modules, optimiser)
-        first, best_at, best = facts["iteration"], facts["best_iteration"], facts["best_score"]
         history = [tuple(row) for row in facts["history"]]
+        state = StageResult(facts["iteration"], facts["best_iteration"], facts["best_score"], history)
     else:
-        best = validate().score
+        state = StageResult(0, 0, validate().score, [])
         save_tensors(best_path, pack(modules, None), {"iteration": 0})
-        keep(0)
+        _keep(checkpoint, modules, optimiser, state)
     total, since = 0.0, 0
-    for iteration in range(first, settings.iterations):
-        if _stale(history, best_at, settings):
+    for iteration in range(state.iterations, settings.iterations):
+        if _stale(state, settings):
             break
         total, since = total + _step(optimiser, parameters, loss_at, iteration, settings), since + 1
         done = iteration + 1
         if done % settings.validate_every == 0 or done == settings.iterations:
             result = validate()
-            history.append((done, total / since, result.score))
-            if result.score < best:
-                best, best_at = result.score, done
+            state = state.after(done, total / since, result.score)
+            if state.best_iteration == done:
                 save_tensors(best_path, pack(modules, None), {"iteration": done})
             _record(log, settings, iteration, total / since, result)
-            keep(done)
+            _keep(checkpoint, modules, optimiser, state)
             total, since = 0.0, 0
         if done % GIVE_BACK_EVERY == 0:
             give_back_memory()
-        tick(done, settings.iterations, f"{settings.name}: validation {best:.3f} at {best_at}")
+        note = f"{settings.name}: validation {state.best_score:.3f} at {state.best_iteration}"
+        tick(done, settings.iterations, note)
     unpack(load_tensors(best_path)[0], modules, None)
-    return StageResult(history[-1][0] if history else 0, best_at, best, history)
+    return state
+
+
+def _keep(
+    checkpoint: Path, modules: dict[str, nn.Module], optimiser: torch.optim.Optimizer, state: StageResult
+) -> None:
+    """Write down where a stage stands, so that another process can go on from there."""
+    facts = state._asdict()
+    facts["iteration"] = facts.pop("iterations")
+    save_tensors(checkpoint, pack(modules, optimiser), facts)
 
 
 def _step(
@@ -172,9 +178,9 @@ def _step(
     return float(loss.detach())
 
 
-def _stale(history: list, best_at: int, settings: StageSettings) -> bool:
+def _stale(state: StageResult, settings: StageSettings) -> bool:
     """Whether `patience` validations have passed without a better one."""
-    return bool(history) and history[-1][0] - best_at >= settings.patience * settings.validate_every
+    return state.iterations - state.best_iteration >= settings.patience * settings.validate_every
 
 
 def _record(log: Log, settings: StageSettings, iteration: int, loss: float, result: Validation) -> None:

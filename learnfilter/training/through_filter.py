@@ -13,10 +13,9 @@ from torch import Tensor
 from learnfilter.filtering.grid_filter import lattice_of, start
 from learnfilter.filtering.motion import MotionModel
 from learnfilter.filtering.rollout import rollout
+from learnfilter.filtering.trace import TINY
 from learnfilter.observe.contract import ObservationModel, Strips
 from learnfilter.render.site import Site
-
-TINY = 1e-30  # a belief of exactly zero at the truth costs 69 nats instead of infinitely many
 
 
 def step_losses(

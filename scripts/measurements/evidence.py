@@ -161,6 +161,12 @@ def gains(rows: Sequence[Row]) -> dict[str, Any]:
         "shifted_nll_gain_4": gain(shifted, "nll_4", -1.0).as_dict(),
         "worst_condition_low": found[worst].low,
         "worst_condition": {"condition": worst[0], "strips": worst[1], **found[worst].as_dict()},
+        "located_fewer": [
+            {"condition": name, "strips": mark, **interval.as_dict()}
+            for (name, mark), interval in found.items()
+            if interval.value < 0
+        ],
+        "comparisons": len(found),
         "gain_4_by_condition": {
             name: interval.as_dict() for (name, mark), interval in found.items() if mark == 4
         },

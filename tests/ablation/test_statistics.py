@@ -19,7 +19,6 @@ from learnfilter.ablation.statistics import (
     holm,
     mcnemar_exact,
     paired_bootstrap,
-    sign_flip,
     site_means,
     sites_needed,
     wilson,
@@ -111,13 +110,6 @@ def test_holm_lies_between_none_and_bonferroni(p):
     """Never below the raw value, never above m times it."""
     adjusted = holm(p)
     assert np.all(adjusted >= p) and np.all(adjusted <= np.minimum(1, np.multiply(len(p), p)) + 1e-15)
-
-
-def test_sign_flips_are_counted_exactly():
-    """Fisher 1935: six pairs, mean difference .158333, 8 of 64 flips as extreme."""
-    differences = np.array([1.2, 0.9, 1.5, 1.1, 0.8, 1.3]) - np.array([1, 0.85, 1.1, 1.2, 0.7, 1])
-    assert differences.mean() == pytest.approx(0.1583333, abs=1e-7)
-    assert sign_flip(differences, rng()) == 0.125
 
 
 # --- bootstrap ----------------------------------------------------------------------------------

@@ -15,7 +15,7 @@ Example:
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Any
+from typing import Any, NamedTuple
 
 from learnfilter.app.build import check_invented
 from learnfilter.app.models import LEARNED
@@ -27,27 +27,48 @@ from learnfilter.app.verb_settings import TrainConfig
 from learnfilter.report import Column, RunPage, Table, write_page
 
 
+class Job(NamedTuple):
+    """How a page speaks of a run: what was done, where nats were measured, and how far to trust them."""
+
+    what: str
+    where: str
+    caution: str
+
+
+TRAINED = Job(
+    "Train an observation model and tune its analytic opponents.",
+    "on held-out sites",
+    "Validation chose the weights, so it flatters them; `learnfilter ablate` proves.",
+)
+TUNED = Job(
+    "Tune the models of an earlier training on recorded drives.",
+    "on the drives it was tuned on",
+    "The same drives tuned the weights and chose them, so this proves nothing: `learnfilter ablate` on rows "
+    "that were left out does.",
+)
+
+
 def run(settings: TrainConfig) -> dict[str, Any]:
     """Do the verb; returns the summary."""
     name = settings.name or "default"
     if settings.start is None:
         check_invented(settings.site)
         folder = open_run("train", name, settings)
-        models = train_models(settings, folder.path)
+        models, job = train_models(settings, folder.path), TRAINED
     else:
         settings = as_started(settings, Path(settings.start))
         place = tuning_place(settings)
         folder = open_run("train", name, settings)
-        models = tune_models(settings, place, folder.path)
+        models, job = tune_models(settings, place, folder.path), TUNED
     validation = {name: model.facts["validation"] for name, model in models.items()}
     write_page(
         RunPage(
             title=folder.path.name,
             verb="train",
-            headline=f"Nats of the true pose on held-out sites: {LEARNED} {validation[LEARNED]:.2f}, "
+            headline=f"Nats of the true pose {job.where}: {LEARNED} {validation[LEARNED]:.2f}, "
             f"best analytic {min(v for n, v in validation.items() if n != LEARNED):.2f}.",
-            confidence="Validation chose the weights, so it flatters them; `learnfilter ablate` proves.",
-            job="Train an observation model and tune its analytic opponents.",
+            confidence=job.caution,
+            job=job.what,
             tables=(
                 Table(
                     "Validation", (Column("model"), Column("nats", ".2f", "low")), tuple(validation.items())
@@ -63,6 +84,6 @@ def run(settings: TrainConfig) -> dict[str, Any]:
         {"validation_nats": validation, "parameters": models[LEARNED].facts["parameters"]}
     )
     for name, value in validation.items():
-        print(f"{name:<16} {value:6.2f} nats on held-out sites")
+        print(f"{name:<16} {value:6.2f} nats {job.where}")
     print(f"written: {Path(folder.path)} (models, report.html)")
     return summary
