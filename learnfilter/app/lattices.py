@@ -3,13 +3,15 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import asdict, dataclass
 from functools import partial
 from pathlib import Path
 from typing import Any
 
+from omegaconf import OmegaConf
+
 from learnfilter.app.build import build_strip
-from learnfilter.app.config import GridConfig
+from learnfilter.app.config import GridConfig, typed
 from learnfilter.app.verb_settings import TrainConfig
 from learnfilter.core.errors import ConfigError
 from learnfilter.core.strip import RingLayout, lay_on_ring
@@ -74,7 +76,8 @@ def build_lattices(settings: TrainConfig, other: dict[str, Any] | None = None) -
     if unknown:
         expected = " or ".join(GridConfig.__dataclass_fields__)
         raise ConfigError("no such setting", place="train.search", expected=expected, got=", ".join(unknown))
-    grid, motion = replace(settings.grid, **(other or {})), settings.motion
+    whole = OmegaConf.create(asdict(settings.grid) | (other or {}))
+    grid, motion = typed(whole, GridConfig), settings.motion
     layout = lay_on_ring(build_strip(settings.strip), grid.headings, grid.bearings_per_heading)
     return Lattices(
         layout.every(grid.column_step),
@@ -86,3 +89,13 @@ def build_lattices(settings: TrainConfig, other: dict[str, Any] | None = None) -
         motion.weigh_after_m,
         motion.weigh_after_rad,
     )
+
+
+def check_search(settings: TrainConfig) -> None:
+    """Refuse lattices that cannot be tried, before a run folder is made and minutes are spent.
+
+    Raises:
+        ConfigError: a change in `train.search` names no setting of the grid, or makes no lattice.
+    """
+    for change in settings.train.search:
+        build_lattices(settings, change)

@@ -391,6 +391,10 @@ MISTAKES = [
     (("train", "start={demo}", f"drives=[{GOOD}]"), "site.file"),
     (("train", "start={demo}", ON_OFFICE, f"drives=[{WIDE}]"), "180"),
     (("train", "train.sites=-1"), "train.sites"),
+    *((("train", f"train.search=[{{{{{change}}}}}]"), named) for change, named in (
+        ("colums: 2", "column_step"), ("headings: 2", "headings"), ("headings: many", "headings"),
+        ("headings: 4096", "bearings"))),
+    (("demo", "train.search=[{{colums: 2}}]"), "column_step"),
     (("train", "train.matching.iterations=-1"), "iterations"),
     (("demo", "grid.cell_m=-1"), "grid.cell_m"),
     (("demo", "motion.turn_from_turn=-1"), "motion.turn_from_turn"),

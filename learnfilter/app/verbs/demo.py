@@ -20,6 +20,7 @@ from learnfilter.app.build import FILE_OPTIONS, build_plan, check_invented
 from learnfilter.app.exporting import export_bundle
 from learnfilter.app.grounds import Place
 from learnfilter.app.judging import Judgement, compared, judge_models, watch_first
+from learnfilter.app.lattices import check_search
 from learnfilter.app.models import LEARNED, Stored
 from learnfilter.app.pages import (
     DEPTH_ONLY,
@@ -50,6 +51,7 @@ from learnfilter.runtime import load_bundle
 def run(settings: DemoConfig) -> dict[str, Any]:
     """Do the verb; returns the summary."""
     check_invented(settings.site)
+    check_search(settings)
     site = settings.site
     if site.file:
         build_plan(site)  # a bad plan is refused before hours are spent

@@ -18,6 +18,7 @@ from pathlib import Path
 from typing import Any, NamedTuple
 
 from learnfilter.app.build import check_invented
+from learnfilter.app.lattices import check_search
 from learnfilter.app.models import LEARNED
 from learnfilter.app.pages import provenance, settings_text, training_charts
 from learnfilter.app.runs import open_run
@@ -53,6 +54,7 @@ def run(settings: TrainConfig) -> dict[str, Any]:
     name = settings.name or "default"
     if settings.start is None:
         check_invented(settings.site)
+        check_search(settings)
         folder = open_run("train", name, settings)
         models, job = train_models(settings, folder.path), TRAINED
     else:
