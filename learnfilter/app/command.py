@@ -16,6 +16,7 @@ import hydra
 from hydra import compose, initialize_config_dir
 from hydra.core.global_hydra import GlobalHydra
 from hydra.core.hydra_config import HydraConfig
+from hydra.core.override_parser.overrides_parser import OverridesParser
 from hydra.errors import HydraException, OverrideParseException
 from omegaconf import DictConfig, ListConfig, OmegaConf
 from omegaconf.errors import OmegaConfBaseException
@@ -34,8 +35,9 @@ _QUIET = (
     "hydra/hydra_logging=none",
     "hydra.output_subdir=null",
     "hydra.sweep.subdir=.",
-    "hydra.job.config.override_dirname.exclude_keys=[name,runs,threads]",
 )
+# Settings of a sweep that do not become part of its jobs' names, beside those that are the same in all.
+_NAMELESS = ("name", "runs", "threads")
 
 
 BASE = "as-trained"  # the condition that all others change
@@ -162,7 +164,10 @@ def with_conditions(composed: DictConfig, overrides: list[str]) -> DictConfig:
 def _sweep(verb: str, overrides: list[str]) -> None:
     """Run every job of a sweep, by whichever launcher `hydra/launcher` names."""
     os.environ["HYDRA_FULL_ERROR"] = "1"  # errors reach run_command instead of being printed there
-    sys.argv[1:] = ["--multirun", *_QUIET, f"hydra.sweep.dir=${{runs}}/{verb}", *overrides]
+    parsed = OverridesParser.create().parse_overrides(overrides)
+    alike = [override.key_or_group for override in parsed if not override.is_sweep_override()]
+    named_apart = f"hydra.job.config.override_dirname.exclude_keys=[{','.join((*_NAMELESS, *alike))}]"
+    sys.argv[1:] = ["--multirun", *_QUIET, named_apart, f"hydra.sweep.dir=${{runs}}/{verb}", *overrides]
     hydra.main(version_base="1.3", config_path=str(data_dir("configs")), config_name=verb)(_sweep_job)()
 
 
