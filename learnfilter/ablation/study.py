@@ -157,7 +157,8 @@ def _rows_on(contender: Contender, arena: Arena, marks: Marks, done: set[tuple])
         yield {
             "contender": contender.name,
             "condition": arena.condition,
-            "site": arena.units[number] if arena.units else arena.ground.site.name,
+            "site": arena.ground.site.name,
+            "unit": arena.units[number] if arena.units else arena.ground.site.name,
             **_row(seen, courses[number], arena, marks),
         }
 

@@ -64,12 +64,10 @@ def column(rows: Sequence[Row], contender: str, key: str, order: Sequence[Drive]
 
 
 def drives_of(rows: Sequence[Row]) -> tuple[list[Drive], NDArray]:
-    """All drives in a fixed order, and the unit of evidence of each: its site, whatever the condition."""
-    site_of = {(row["condition"], row["drive"]): row["site"] for row in rows}
-    order = sorted(site_of)
-    sites = np.array([site_of[drive] for drive in order])
-    # on a single site the drives are what is independent
-    return order, np.array([drive for _, drive in order]) if len(set(sites)) == 1 else sites
+    """All drives in a fixed order, and the unit of evidence of each, whatever the condition."""
+    unit_of = {(row["condition"], row["drive"]): row["unit"] for row in rows}
+    order = sorted(unit_of)
+    return order, np.array([unit_of[drive] for drive in order])
 
 
 def conditions_of(rows: Sequence[Row]) -> list[str]:

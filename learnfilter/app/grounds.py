@@ -161,4 +161,5 @@ def drives_on(
         rng = stream(seed, "drives on", day, "drive")
         made.append(rehearse(world, strip, rng, rows, f"{plan.name}-{day}"))
         worlds.append(world)
-    return Place(plan, tuple(made), tuple(worlds))
+    # on a single site the drives are what is independent
+    return Place(plan, tuple(made), tuple(worlds), units=tuple(drive.name for drive in made))

@@ -90,7 +90,7 @@ def spread(values: list[float]) -> dict[str, float]:
 def tagged(folders: list[Path]) -> list[Row]:
     """Rows of all runs, sites and drives named by run."""
     return [
-        {**row, "site": f"{folder.name}/{row['site']}", "drive": f"{folder.name}/{row['drive']}"}
+        {**row, **{key: f"{folder.name}/{row[key]}" for key in ("unit", "drive")}}
         for folder in folders
         for row in read_rows(folder / "rows.jsonl")
     ]
@@ -140,18 +140,17 @@ def from_library(folder: Path) -> dict[str, Any]:
     from dataclasses import replace
 
     from learnfilter.app.exporting import filter_for, vector_drive
-    from learnfilter.app.grounds import build_lattices
+    from learnfilter.app.lattices import build_lattices
     from learnfilter.app.models import LEARNED, settings_of, stored
-    from learnfilter.app.training import training_grounds, untrained_gap
+    from learnfilter.app.training import training_material, untrained_gap
     from learnfilter.export.check import against_torch
     from learnfilter.plan import read_plan
 
     settings = settings_of(folder)
     settings = replace(settings, site=replace(settings.site, file=None))
     say("untrained gap")
-    lattices = build_lattices(settings)
-    models = stored(folder / "models", lattices.layout)
-    train, held_out = training_grounds(settings, lattices)
+    models = stored(folder, settings)
+    train, held_out = training_material(settings).grounds(build_lattices(settings), stills=False)
     gap = untrained_gap(settings, models, train, held_out)
     say("runtime against torch")
     plan = read_plan(folder / "site.geojson")
@@ -184,8 +183,7 @@ def real_plan(folders: list[Path]) -> dict[str, Any]:
         subprocess.run(command(*words), check=True, stdout=sys.stderr)
         runs.append(RUNS / "ablate" / f"seed-{seed}")
     learned, analytic = joined(runs)
-    order, _ = drives_of(learned)
-    drives = np.array(order)
+    order, drives = drives_of(learned)
     a, b = (
         column(rows, name, "located_8", order)
         for rows, name in ((learned, "learned"), (analytic, "analytic"))

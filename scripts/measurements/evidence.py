@@ -127,7 +127,7 @@ def studied(folders: Sequence[Path], name: str, words: Sequence[str]) -> list[Ro
         rows = read_rows(RUNS / "ablate" / f"{name}-{folder.name}" / "rows.jsonl")
         for row in rows:
             row["contender"] = "analytic" if row["contender"] == best else row["contender"]
-            for key in ("site", "drive"):
+            for key in ("unit", "drive"):
                 row[key] = f"{folder.name}/{row[key]}"
         return rows
 

@@ -181,7 +181,7 @@ def test_confidence_is_held_to_the_locks_own_reach(tmp_path):
 def test_rows_name_their_unit_of_evidence(tmp_path, units, sites):
     """The site, unless each drive has a unit of its own."""
     rows = rows_in(tmp_path / "rows.jsonl", [contender()], Arena("usual", ground(2, 2), units=units))
-    assert [row["site"] for row in rows] == sites
+    assert [row["unit"] for row in rows] == sites
 
 
 def test_marks_say_when_and_how_near(tmp_path):

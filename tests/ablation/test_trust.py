@@ -16,7 +16,7 @@ def row(number, mass, right, rank, *, site=None, condition="usual", contender="o
     return {
         "contender": contender,
         "condition": condition,
-        "site": f"site {number}" if site is None else site,
+        "unit": f"site {number}" if site is None else site,
         "drive": f"drive {number:02d}",
         "mass": list(mass),
         "right": list(right),

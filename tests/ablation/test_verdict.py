@@ -21,6 +21,7 @@ def rows(learned, analytic, *, one_site=False, nats=(1.0, 2.0), mark=MARK, condi
             "contender": name,
             "condition": condition,
             "site": "site" if one_site else f"site {number}",
+            "unit": f"drive {number}" if one_site else f"site {number}",
             "drive": f"drive {number:02d}",
             f"located_{mark}": float(value),
             f"nll_{mark}": nll,
@@ -87,9 +88,17 @@ def test_units_are_drives_on_one_site_and_sites_on_many(one_site):
 
 def test_two_drives_on_each_of_three_sites_are_three_units():
     """Drives of one site resemble each other, so they are not counted as evidence apart."""
-    table = [row | {"site": f"site {int(row['drive'][-2:]) // 2}"} for row in rows([1] * 6, [0] * 6)]
+    table = [row | {"unit": f"site {int(row['drive'][-2:]) // 2}"} for row in rows([1] * 6, [0] * 6)]
     (found,) = differences(table, "learned", "analytic", stream(0, "test"))
     assert found.located.n == 3
+
+
+def test_starts_that_overlap_in_one_block_are_one_unit():
+    """Ten starts in one block of a recorded drive share their strips: they decide no more than one drive."""
+    table = [row | {"unit": "tuesday, to row 20"} for row in rows([1] * 10, [0] * 10, one_site=True)]
+    (found,) = differences(table, "learned", "analytic", stream(0, "test"))
+    assert found.located.n == 1 and math.isnan(found.located.low)
+    assert verdict(table).ship == "cannot tell"
 
 
 def test_on_one_site_more_drives_are_asked_for_not_sites():

@@ -152,7 +152,7 @@ def test_a_condition_of_ones_own_is_looked_for_in_that_folder(tmp_path, capsys):
 
 
 def test_a_sweep_runs_each_value_in_a_folder_of_its_own(tmp_path):
-    """Names of the runs say what was varied, and nothing else: with every setting they outgrow a file name."""
+    """Names of the runs say what was varied, and nothing else: with every setting they outgrow file names."""
     alike = ["site.file=" + os.path.relpath(SQUARE), "robot_radius_m=0.2", "name=s"]
     assert run_command(["plan", "-m", *alike, "seed=1,2"]) == 0
     folders = {path.name for path in (tmp_path / "runs" / "plan").iterdir() if path.is_dir()}
