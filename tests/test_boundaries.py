@@ -21,7 +21,7 @@ ARROWS: dict[str, set[str]] = {
     "render": {"plan"},
     "observe": {"render"},
     "filtering": {"observe", "drives"},
-    "movers": {"filtering"},
+    "movers": {"filtering", "runtime"},
     "training": {"movers", "filtering"},
     "ablation": {"movers", "filtering"},
     "survey": {"render", "runtime"},

@@ -6,10 +6,11 @@ import math
 from dataclasses import asdict
 from typing import Any
 
-from learnfilter.app.config import SiteConfig, StripConfig, hold
+from learnfilter.app.config import MoverConfig, SiteConfig, StripConfig, hold
 from learnfilter.core.errors import ConfigError
 from learnfilter.core.strip import Strip, even_strip
 from learnfilter.plan import FloorPlan, read_plan
+from learnfilter.runtime.moves import Footprint, Motion, check_motions
 from learnfilter.sim import FAMILIES
 from learnfilter.sim.conditions import Conditions
 from learnfilter.sim.families import SIZES_M
@@ -32,6 +33,22 @@ def build_strip(settings: StripConfig) -> Strip:
         blind=tuple(settings.blind),
         mount=(settings.mount_x_m, settings.mount_y_m, math.radians(settings.mount_heading_deg)),
     )
+
+
+def build_motions(settings: MoverConfig) -> tuple[Motion, ...]:
+    """The motions that movers choose among.
+
+    Raises:
+        ConfigError: a blocked robot could not turn away.
+    """
+    motions = tuple(Motion(move.distance_m, 0.0, math.radians(move.turn_deg)) for move in settings.moves)
+    check_motions(motions)
+    return motions
+
+
+def build_footprint(settings: MoverConfig, strip: Strip, radius_m: float) -> Footprint:
+    """The robot that movers keep clear of what its strip shows."""
+    return Footprint(radius_m, strip.mount, settings.clearance_m, settings.skirt_m)
 
 
 def build_conditions(settings: Any) -> Conditions:

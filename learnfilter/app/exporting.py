@@ -12,13 +12,16 @@ from learnfilter.app.models import Stored
 from learnfilter.app.verb_settings import TrainConfig
 from learnfilter.core.strip import Strip
 from learnfilter.drives.drive import Drive
+from learnfilter.drives.tables import read_drive
 from learnfilter.export import Filter, Provenance, write_bundle
 from learnfilter.plan import FloorPlan
 from learnfilter.runtime.bundle import Weighing
 from learnfilter.sim.conditions import Conditions
 
-# Rows of the drive that test vectors are made from: enough that 50 strips are weighed on any site.
+# Rows of the drives that test vectors are made from: enough that 50 strips are weighed on any site.
 VECTOR_ROWS = 90
+# Drives that the watch is calibrated by, and rows of each: 2,000 strips, and seconds on a small site.
+USUAL_DRIVES, USUAL_ROWS = 60, 34
 
 
 def filter_for(made_with: TrainConfig, model: Stored, plan: FloorPlan) -> Filter:
@@ -29,11 +32,6 @@ def filter_for(made_with: TrainConfig, model: Stored, plan: FloorPlan) -> Filter
     return Filter(model.model, model.motion, site, build_strip(made_with.strip), weighing)
 
 
-def vector_drive(plan: FloorPlan, strip: Strip, radius_m: float, seed: int, rows: int = VECTOR_ROWS) -> Drive:
-    """A simulated drive for the bundle's test vectors."""
-    return drives_on(plan, strip, Conditions(), 1, rows, seed, radius_m).drives[0]
-
-
 def export_bundle(
     made_with: TrainConfig,
     model: Stored,
@@ -41,6 +39,8 @@ def export_bundle(
     folder: Path,
     figures: dict[str, Any] | None = None,
     cautions: Sequence[str] = (),
+    precision: str = "fp32",
+    usual: Sequence[Drive] | None = None,
 ) -> dict[str, Any]:
     """Write the bundle; returns its sizes.
 
@@ -49,13 +49,57 @@ def export_bundle(
         model: which of its models.
         plan: of the site.
         folder: where.
-        figures: of an ablation, which go along.
+        figures: results of an ablation, which go along with their verdict.
         cautions: beyond the safety notice.
+        precision: of weights and rings, one of `runtime.bundle.PRECISIONS`.
+        usual: drives on the site to calibrate the watch by; None for simulated ones.
     """
     chosen = filter_for(made_with, model, plan)
-    drive = vector_drive(plan, chosen.strip, made_with.grid.robot_radius_m, made_with.seed)
-    stages = model.facts["stages"]
+
+    def simulated(drives: int, rows: int, seed: int) -> tuple[Drive, ...]:
+        radius_m = made_with.grid.robot_radius_m
+        return drives_on(plan, chosen.strip, Conditions(), drives, rows, seed, radius_m).drives
+
     provenance = Provenance(
-        plan.content_hash(), model.facts["config"], [model.facts["seed"]], {"stages": stages}
+        plan.content_hash(),
+        model.facts["config"],
+        [model.facts["seed"]],
+        {"stages": model.facts["stages"]},
+        trained_on(made_with),
     )
-    return write_bundle(folder, chosen, drive, provenance, figures, cautions)
+    results = dict(figures or {})
+    verdict = results.pop("verdict", None)
+    return write_bundle(
+        folder,
+        chosen,
+        simulated(2, VECTOR_ROWS, made_with.seed),
+        provenance,
+        results,
+        cautions,
+        precision=precision,
+        verdict=verdict,
+        usual=simulated(USUAL_DRIVES, USUAL_ROWS, made_with.seed + 1) if usual is None else usual,
+    )
+
+
+def recorded(paths: Sequence[str], strip: Strip) -> list[Drive] | None:
+    """Recorded drives to calibrate the watch by, each cut to starts of USUAL_ROWS rows; None for no paths."""
+    if not paths:
+        return None
+    drives = [read_drive(Path(path), strip) for path in paths]
+    return [
+        drive.part(begin, begin + USUAL_ROWS)
+        for drive in drives
+        for begin in range(0, len(drive) - USUAL_ROWS + 1, USUAL_ROWS)
+    ]
+
+
+def trained_on(made_with: TrainConfig) -> dict[str, Any]:
+    """What a training run learned from, for the manifest: `sites`, `drives` and their `source`."""
+    if made_with.drives:
+        names = [Path(drive).name for drive in made_with.drives]
+        return {"sites": 1, "drives": len(names), "source": names}
+    recipe = made_with.train
+    return {
+        "sites": recipe.sites, "drives": recipe.sites * recipe.drives, "source": list(made_with.site.families)
+    }  # fmt: skip

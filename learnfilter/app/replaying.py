@@ -2,24 +2,23 @@
 
 from __future__ import annotations
 
+import time
 from collections.abc import Iterable
+from dataclasses import dataclass
 from pathlib import Path
-from typing import Any, NamedTuple
+from typing import Any
 
 import numpy as np
 import pyarrow as pa
 import pyarrow.parquet as pq
-from numpy.typing import NDArray
 
-from learnfilter.core.errors import DriveError
+from learnfilter.app.episodes import LOCKED, ROW, STATES, Lost, Moment, Rows, episodes
+from learnfilter.app.patches import Patch, disagreeing, usual_share
+from learnfilter.core.errors import DriveError, StepError
 from learnfilter.core.files import whole_file
-from learnfilter.core.grid import PoseGrid
 from learnfilter.drives.drive import Drive
 from learnfilter.drives.metrics import located
-from learnfilter.plan.floorplan import FloorPlan
-from learnfilter.report import draw_replay
-from learnfilter.runtime import Bundle, Localizer
-from learnfilter.runtime.site import RobotSite
+from learnfilter.runtime import Bundle, Estimate, Localizer
 
 SCHEMA = pa.schema(
     [
@@ -31,43 +30,62 @@ SCHEMA = pa.schema(
         ("mass", pa.float64()),
         ("entropy_nats", pa.float64()),
         ("log_evidence_nats", pa.float64()),
+        ("surprise", pa.float64()),
         ("state", pa.string()),
         ("weighed", pa.bool_()),
+        ("alarm", pa.bool_()),
     ],
-    metadata={"learnfilter": '{"schema": 1, "table": "estimates"}'},
+    metadata={"learnfilter": '{"schema": 2, "table": "estimates"}'},
 )
 
 
-class Replayed(NamedTuple):
-    """What a replay needs to be drawn and summed up; small beside the drive.
+@dataclass(frozen=True, eq=False)
+class Replayed:
+    """What is left of a replay; small beside the drive.
 
     Attributes:
-        pose: [t 3] estimated pose of the robot.
-        entropy: [t] nats.
-        locked: [t] bool.
-        reference: [t 3] of the drive, NaN where unknown.
+        rows: [t] of `episodes.ROW`.
+        episodes: what happened.
+        patches: where the plan disagrees with what a locked robot saw.
+        milliseconds: mean wall time of a weighed strip.
+        depth_only: whether colour was to be weighed and the drive has none.
     """
 
-    pose: NDArray[np.float64]
-    entropy: NDArray[np.float64]
-    locked: NDArray[np.bool_]
-    reference: NDArray[np.float64]
+    rows: Rows
+    episodes: tuple[Moment, ...]
+    patches: tuple[Patch, ...]
+    milliseconds: float
+    depth_only: bool
+
+    @property
+    def lost(self) -> int:
+        """How many times the search began anew."""
+        return sum(isinstance(episode, Lost) for episode in self.episodes)
 
     def summary(self) -> dict[str, Any]:
-        """Where it locked and how near it was."""
-        first = int(np.argmax(self.locked)) if self.locked.any() else None
-        right = located(self.pose, self.reference)
-        known = np.isfinite(right)
+        """Where it locked, how near it was, what happened and what disagrees, for JSON."""
+        rows = self.rows
+        locked, right = rows["state"] == LOCKED, located(rows["pose"], rows["reference"])
+        first, known = int(np.argmax(locked)) if locked.any() else None, np.isfinite(right)
         return {
-            "rows": len(self.pose),
+            "rows": len(rows),
             "locked_at_row": first,
-            "locked_rows": int(self.locked.sum()),
+            "strips_until_lock": None if first is None else int(rows["weighed"][: first + 1].sum()),
+            "metres_until_lock": None if first is None else float(rows["travelled_m"][first]),
+            "locked_rows": int(locked.sum()),
+            "locked_share": float(locked.mean()),
             "rows_with_reference": int(known.sum()),
-            "located_share": float(right[known].mean()) if known.any() else None,
-            "located_share_while_locked": float(right[known & self.locked].mean())
-            if (known & self.locked).any()
-            else None,
+            "located_share": _mean(right[known]),
+            "located_share_while_locked": _mean(right[known & locked]),
+            "lost": self.lost,
+            "milliseconds_a_strip": self.milliseconds,
+            "episodes": [episode.plain() for episode in self.episodes],
+            "patches": [patch._asdict() for patch in self.patches],
         }
+
+
+def _mean(values: np.ndarray) -> float | None:
+    return float(values.mean()) if len(values) else None
 
 
 def replay_bundle(bundle: Bundle, batches: Iterable[Drive], table: Path) -> Replayed:
@@ -75,29 +93,38 @@ def replay_bundle(bundle: Bundle, batches: Iterable[Drive], table: Path) -> Repl
 
     Args:
         bundle: as loaded.
-        batches: the drive in pieces, so that it may be longer than memory.
+        batches: the drive in pieces, so that it may be longer than memory; nothing of them is kept.
         table: Parquet file of estimates, written whole or not at all.
 
     Raises:
-        DriveError: the drive's strips do not fit the bundle's sensor.
+        DriveError: the drive's strips do not fit the bundle's sensor, or a row cannot be used.
     """
-    localizer = Localizer(bundle)
-    parts: list[tuple] = []
+    localizer, colour = Localizer(bundle), bundle.strip.has_colour
+    parts, done, seconds, travelled, depth_only = [], 0, 0.0, 0.0, False
     with whole_file(table) as beside, pq.ParquetWriter(beside, SCHEMA) as writer:
         for drive in batches:
             _check_fits(drive, bundle.strip.columns)
-            rows = [_row(localizer, drive, i, bundle.strip.has_colour) for i in range(len(drive))]
-            writer.write_table(pa.Table.from_pylist(rows, SCHEMA))
-            reference = np.full((len(drive), 3), np.nan) if drive.reference is None else drive.reference
-            parts.append(
-                (
-                    np.array([[r["x_m"], r["y_m"], r["heading_rad"]] for r in rows]),
-                    np.array([r["entropy_nats"] for r in rows]),
-                    np.array([r["state"] == "locked" for r in rows]),
-                    reference,
-                )
-            )
-    return Replayed(*(np.concatenate(column) for column in zip(*parts, strict=True)))
+            depth_only |= colour and drive.rgb is None
+            estimates, kept = [], np.zeros(len(drive), ROW)
+            for row in range(len(drive)):
+                clock = time.perf_counter()
+                estimate = _step(localizer, drive, row, colour, done + row)
+                seconds += (time.perf_counter() - clock) * estimate.weighed
+                estimates.append(_table_row(estimate, float(drive.time_s[row])))
+                if done + row > 0:  # the first odometry is of no effect
+                    travelled += float(np.hypot(*drive.odometry[row, :2]))
+                kept[row] = _kept_row(estimate, drive, row, travelled)
+            writer.write_table(pa.Table.from_pylist(estimates, SCHEMA))
+            parts.append(kept)
+            done += len(kept)
+    rows, share = np.concatenate(parts), usual_share(bundle.manifest, localizer.counts)
+    return Replayed(
+        rows,
+        episodes(rows, estimate.modes),
+        disagreeing(localizer.counts, bundle.site.grid, share),
+        1e3 * seconds / int(rows["weighed"].sum()),
+        depth_only,
+    )
 
 
 def _check_fits(drive: Drive, columns: int) -> None:
@@ -108,48 +135,38 @@ def _check_fits(drive: Drive, columns: int) -> None:
         )  # fmt: skip
 
 
-def _row(localizer: Localizer, drive: Drive, row: int, colour: bool) -> dict[str, Any]:
+def _step(localizer: Localizer, drive: Drive, row: int, colour: bool, number: int) -> Estimate:
     rgb = drive.rgb[row] if drive.rgb is not None and colour else None
-    estimate = localizer.step(drive.odometry[row], drive.depth_m[row], rgb, float(drive.time_s[row]))
+    try:
+        return localizer.step(drive.odometry[row], drive.depth_m[row], rgb, float(drive.time_s[row]))
+    except StepError as error:
+        place = f"row {number}, {error.place}"
+        raise DriveError(
+            error.message, file=drive.name, place=place, expected=error.expected, got=error.got
+        ) from error
+
+
+def _table_row(estimate: Estimate, time_s: float) -> dict[str, Any]:
+    x, y, heading = map(float, estimate.pose)
     return {
-        "time_s": float(drive.time_s[row]),
-        "x_m": float(estimate.pose[0]),
-        "y_m": float(estimate.pose[1]),
-        "heading_rad": float(estimate.pose[2]),
+        "time_s": time_s,
+        "x_m": x,
+        "y_m": y,
+        "heading_rad": heading,
         "covariance": estimate.covariance.ravel().tolist(),
         "mass": estimate.mass,
         "entropy_nats": estimate.entropy,
         "log_evidence_nats": estimate.log_evidence,
+        "surprise": estimate.surprise,
         "state": estimate.state,
         "weighed": bool(estimate.weighed),
+        "alarm": bool(estimate.alarm),
     }
 
 
-def seen_surfaces(site: RobotSite, grid: PoseGrid, every: int = 5) -> FloorPlan:
-    """What a bundle knows of its site, as short strokes where rings end: a backdrop when no plan is given."""
-    cells = site.cells[::every]
-    angle = site.layout.ring_angles()
-    ranges = site.range_m[::every].astype(float)
-    ranges[site.unsure[::every] | ~np.isfinite(ranges)] = np.nan
-    x = grid.x_centres()[cells[:, 1], None] + ranges * np.cos(angle)
-    y = grid.y_centres()[cells[:, 0], None] + ranges * np.sin(angle)
-    strokes = np.stack([x, y, np.roll(x, -1, axis=1), np.roll(y, -1, axis=1)], axis=-1).reshape(-1, 4)
-    # rings that neighbour at an edge end on different things: no stroke between those
-    short = np.hypot(strokes[:, 2] - strokes[:, 0], strokes[:, 3] - strokes[:, 1]) < grid.cell_m
-    strokes = strokes[short]
-    blank = np.zeros(len(strokes), int)
-    return FloorPlan(strokes, blank, blank + 1, blank - 1, blank)
-
-
-def draw(replayed: Replayed, plan: FloorPlan, path: Path, title: str) -> None:
-    """The trail on the plan."""
-    known = np.isfinite(replayed.reference).all(axis=1).any()
-    draw_replay(
-        plan,
-        replayed.pose,
-        path,
-        entropy_nats=replayed.entropy,
-        reference=replayed.reference if known else None,
-        locked_at=int(np.argmax(replayed.locked)) if replayed.locked.any() else None,
-        title=title,
-    )
+def _kept_row(estimate: Estimate, drive: Drive, row: int, travelled: float) -> tuple[Any, ...]:
+    reference = np.full(3, np.nan) if drive.reference is None else drive.reference[row]
+    return (
+        drive.time_s[row], travelled, estimate.pose, estimate.mass, estimate.entropy, estimate.surprise,
+        STATES.index(estimate.state), estimate.weighed, estimate.alarm, reference,
+    )  # fmt: skip

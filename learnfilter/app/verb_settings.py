@@ -15,6 +15,7 @@ from learnfilter.app.config import (
     hold,
 )
 from learnfilter.app.recipes import BlocksConfig, ObserveConfig, RecipeConfig, StudyConfig
+from learnfilter.runtime.bundle import PRECISIONS
 
 
 @dataclass
@@ -94,8 +95,28 @@ class ExportConfig(Common):
     model: str
     contender: str
     site: SiteConfig
+    precision: str
+    drives: list[str]
     ablation: str | None
     out: str | None
+
+    def __post_init__(self) -> None:
+        super().__post_init__()
+        hold("precision", self.precision in PRECISIONS, " or ".join(PRECISIONS), self.precision)
+
+
+@dataclass
+class VerifyConfig(Common):
+    """Settings of `learnfilter verify`."""
+
+    bundle: str
+    outputs: str | None
+    within: float | None
+
+    def __post_init__(self) -> None:
+        super().__post_init__()
+        good = self.within is None or 0 < self.within < 1
+        hold("within", good, "above 0 and below 1", self.within)
 
 
 @dataclass
@@ -103,9 +124,20 @@ class ReplayConfig(Common):
     """Settings of `learnfilter replay`."""
 
     site: SiteConfig
-    bundle: str
+    bundle: Any  # of the two that `bundles` takes: the composing library knows no such choice
     drive: str
     depth_kind: str | None
+
+    def __post_init__(self) -> None:
+        super().__post_init__()
+        paths = self.bundles
+        good = paths and all(isinstance(path, str) for path in paths) and len(set(paths)) == len(paths)
+        hold("bundle", bool(good), "the folder of a bundle, or a list of different ones", self.bundle)
+
+    @property
+    def bundles(self) -> list[str]:
+        """The folders, one or several."""
+        return self.bundle if isinstance(self.bundle, list) else [self.bundle]
 
 
 @dataclass

@@ -15,6 +15,7 @@ from learnfilter.core.poses import wrap
 
 NEAR_M = 0.5
 NEAR_RAD = np.radians(15.0)
+NEGLIGIBLE = 1e-3
 
 
 class Mode(NamedTuple):
@@ -78,21 +79,33 @@ def mode_at(belief: NDArray, grid: PoseGrid, pose: NDArray, rounds: int = 3) -> 
 def modes(belief: NDArray, grid: PoseGrid, count: int = 4) -> tuple[Mode, ...]:
     """Separate modes, heaviest first: the highest pose, its surroundings taken out, again.
 
+    No further mode is looked for once less than `NEGLIGIBLE` of the belief is left.
+
     Args:
         belief: [h r c] probabilities.
         grid: the lattice.
         count: at most this many.
     """
     left = np.array(belief, dtype=np.float32)
-    found = []
+    found: list[Mode] = []
     for _ in range(count):
         h, r, c = np.unravel_index(int(np.argmax(left)), left.shape)
         if left[h, r, c] <= 0:
             break
         peak = np.array([grid.x_centres()[c], grid.y_centres()[r], grid.heading_centres()[h]])
-        found.append(mode_at(belief, grid, peak))
+        mode = mode_at(belief, grid, peak)
+        if not any(_beside(mode, other) for other in found):  # a flank can climb to a mode that was found
+            found.append(mode)
         _take_out(left, grid, peak)
+        if left.sum() < NEGLIGIBLE:
+            break
     return tuple(sorted(found, key=lambda mode: -mode.mass))
+
+
+def _beside(mode: Mode, other: Mode) -> bool:
+    """Whether two means are within the reach of a mode."""
+    gap = mode.pose - other.pose
+    return bool(np.hypot(gap[0], gap[1]) <= NEAR_M and abs(wrap(gap[2])) <= NEAR_RAD)
 
 
 def _take_out(belief: NDArray, grid: PoseGrid, pose: NDArray) -> None:

@@ -7,24 +7,38 @@ import os
 import tempfile
 from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager
-from dataclasses import asdict, dataclass, replace
+from dataclasses import asdict, dataclass, field, replace
 from pathlib import Path
-from typing import Any
+from typing import Any, NamedTuple
 
-import numpy as np
+from numpy.typing import NDArray
 from safetensors.numpy import save
 
 from learnfilter import __version__
 from learnfilter.core.errors import ConfigError
 from learnfilter.core.notice import SAFETY_NOTICE
 from learnfilter.drives.drive import Drive
+from learnfilter.export.calibrate import calibrate
+from learnfilter.export.onnx_files import OBSERVE, STEP, write_onnx
+from learnfilter.export.precision import input_moments, restored, stored
 from learnfilter.export.reference import Filter
-from learnfilter.export.robot import robot_model
+from learnfilter.export.rings import as_shipped, packed
+from learnfilter.export.robot import robot_model, with_arrays
 from learnfilter.export.vectors import make_vectors, to_bytes
-from learnfilter.runtime.bundle import MANIFEST, SCHEMA, SITE, VECTORS, WEIGHTS, file_entry, load_bundle, seal
+from learnfilter.runtime.bundle import (
+    MANIFEST,
+    SCHEMA,
+    SITE,
+    VECTORS,
+    WEIGHTS,
+    assemble,
+    file_entry,
+    load_bundle,
+    seal,
+)
+from learnfilter.runtime.site import reads_field
 
-FILES = frozenset((MANIFEST, WEIGHTS, SITE, VECTORS))
-_RINGS = ("cells", "range_m", "unsure", "finish", "palette", "field_m")
+FILES = frozenset((MANIFEST, WEIGHTS, SITE, VECTORS, OBSERVE, STEP))
 DEPTH_ONLY = "The plan names no finishes or the sensor has no colour: this bundle goes by depth only."
 
 
@@ -36,58 +50,77 @@ class Provenance:
         plan_sha256: `FloorPlan.content_hash()` of the plan the site was rendered from.
         config_sha256: digest of the settings it was trained with.
         seeds: of the training.
-        training: summary of it; empty for an analytic model.
+        training: summary of its stages; empty for an analytic model.
+        data: how many `sites` and `drives` it was trained on, and their `source`: families of invented
+            sites, or recorded drives; as far as known.
     """
 
     plan_sha256: str
     config_sha256: str
     seeds: Sequence[int]
     training: Mapping[str, Any]
+    data: Mapping[str, Any] = field(default_factory=dict)
 
 
 def write_bundle(
     folder: str | Path,
     filter_: Filter,
-    drive: Drive,
+    drives: Sequence[Drive],
     provenance: Provenance,
     figures: Mapping[str, Any] | None = None,
     cautions: Sequence[str] = (),
+    *,
+    precision: str = "fp32",
+    verdict: Mapping[str, str] | None = None,
+    usual: Sequence[Drive] = (),
 ) -> dict[str, Any]:
-    """Write a bundle for one site.  A changed plan asks for another site and drive, not for training.
+    """Write a bundle for one site.  A changed plan asks for another site and drives, not for training.
 
     Args:
         folder: where; an earlier bundle there is replaced, anything else is left alone.
         filter_: what to ship.
-        drive: on that site, recorded or simulated, for the test vectors; no reference poses needed.
+        drives: two on that site, recorded or simulated, for the test vectors; no reference poses needed.
         provenance: of the weights.
         figures: of an ablation.
         cautions: beyond the safety notice.
+        precision: of the weights and rings, one of `runtime.bundle.PRECISIONS`; int8 is calibrated on the
+            site and the first drive.
+        verdict: of the ablation: `ship`, `sentence`, `confidence`.
+        usual: drives on that site where the plan is true, to calibrate the watch by; none for no watch.
 
     Returns:
         `folder`, `bytes` in all, `weights_bytes`, `weights` (how many numbers), `cells`, `poses`.
 
     Raises:
         ConfigError: the folder holds something that is not a bundle.
-        DriveError: the drive is too short for the vectors.
+        DriveError: the drives are too short for the vectors, or too few to calibrate by.
         BundleError: what was written cannot be read back (a setting out of the format's range).
     """
     folder = Path(folder)
     refuse_to_replace(folder)
-    facts, weights = robot_model(filter_.model)
-    site = {name: np.ascontiguousarray(getattr(filter_.site, name)) for name in _RINGS}
-    vectors = make_vectors(filter_, replace(drive, strip=filter_.strip))
-    contents = {WEIGHTS: save(weights), SITE: save(site), VECTORS: to_bytes(vectors)}
-    manifest = seal(
-        {
-            **_facts(filter_),
-            "schema": SCHEMA,
-            "model": facts,
-            "provenance": {"version": __version__, **asdict(provenance), "seeds": list(provenance.seeds)},
-            "figures": dict(figures or {}),
-            "cautions": [SAFETY_NOTICE, *_depth_only(filter_), *cautions],
-            "files": {name: file_entry(content) for name, content in contents.items()},
-        }
-    )
+    rounded = _rounded(filter_, drives[0], precision)
+    contents = {WEIGHTS: save(rounded.weights), SITE: save(rounded.rings)}
+    facts = {
+        **_facts(filter_),
+        "schema": SCHEMA,
+        "precision": precision,
+        "model": rounded.model,
+        "site": rounded.site,
+        "provenance": {"version": __version__, **asdict(provenance), "seeds": list(provenance.seeds)},
+        "figures": dict(figures or {}),
+        "verdict": None if verdict is None else dict(verdict),
+        "cautions": [SAFETY_NOTICE, *_depth_only(filter_), *cautions],
+        "watch": None,
+    }
+    bundle = assemble(folder, facts, contents[WEIGHTS], contents[SITE])
+    if usual:
+        facts["watch"] = calibrate(bundle, usual)
+        bundle = assemble(folder, facts, contents[WEIGHTS], contents[SITE])
+    # vectors are what a port must reproduce, so they come from the numbers it gets
+    contents[VECTORS] = to_bytes(make_vectors(rounded.filter, drives, bundle.watch))
+    facts["files"] = {name: file_entry(content) for name, content in contents.items()}
+    contents |= write_onnx(replace(bundle, manifest=facts))
+    manifest = seal({**facts, "files": {name: file_entry(content) for name, content in contents.items()}})
     contents[MANIFEST] = (json.dumps(manifest, indent=2, sort_keys=True) + "\n").encode()
     with _whole_folder(folder) as beside:
         for name, content in contents.items():
@@ -97,10 +130,31 @@ def write_bundle(
         "folder": str(folder),
         "bytes": sum(map(len, contents.values())),
         "weights_bytes": len(contents[WEIGHTS]),
-        "weights": sum(array.size for array in weights.values()),
+        "weights": sum(array.size for array in restored(rounded.weights).values()),
         "cells": filter_.site.n_cells,
         "poses": filter_.site.n_cells * filter_.site.grid.headings,
     }
+
+
+class _Rounded(NamedTuple):
+    """A filter at a precision: facts of model and site with their arrays, and the filter of those numbers."""
+
+    model: dict[str, Any]
+    weights: dict[str, NDArray[Any]]
+    site: dict[str, Any]
+    rings: dict[str, NDArray[Any]]
+    filter: Filter
+
+
+def _rounded(filter_: Filter, drive: Drive, precision: str) -> _Rounded:
+    model, arrays = robot_model(filter_.model)
+    with_field = reads_field(model)
+    rings, facts = packed(filter_.site, with_field, precision)
+    site = as_shipped(filter_.site, with_field, precision)
+    moments = input_moments(filter_.model, site, drive) if precision == "int8" else {}
+    weights = stored(arrays, precision, moments)
+    shipped = filter_._replace(model=with_arrays(filter_.model, restored(weights)), site=site)
+    return _Rounded(model, weights, facts, rings, shipped)
 
 
 def refuse_to_replace(folder: Path) -> None:
@@ -131,7 +185,6 @@ def _facts(filter_: Filter) -> dict[str, Any]:
         "layout": {**asdict(site.layout), "source": list(site.layout.source)},
         "noise": asdict(filter_.noise),
         "weighing": asdict(filter_.weighing),
-        "site": {"name": site.name, "key": site.key, "field_scale": site.field_scale},
     }
 
 

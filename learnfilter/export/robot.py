@@ -1,12 +1,14 @@
-"""Trained models as the facts and arrays that the robot's models read (`runtime/models.py`)."""
+"""Trained models as the facts and arrays that the robot's models read (`runtime/models.py`), and back."""
 
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import asdict
-from typing import Any
+from copy import deepcopy
+from dataclasses import asdict, replace
+from typing import Any, NamedTuple, TypeVar
 
 import numpy as np
+import torch
 from numpy.typing import NDArray
 
 from learnfilter.core.errors import InputError
@@ -20,6 +22,7 @@ from learnfilter.runtime.matcher import matcher_layers
 
 Facts = dict[str, Any]
 Named = dict[str, NDArray[Any]]
+Tabled = TypeVar("Tabled", BeamModel, EndpointModel)
 
 
 def _beam(model: BeamModel) -> tuple[Facts, Named]:
@@ -62,12 +65,43 @@ def _matcher(model: Matcher) -> tuple[Facts, Named]:
     return {**facts, "layers": [layer._asdict() for layer in layers]}, arrays
 
 
-_KINDS: Mapping[type[ObservationModel], tuple[str, Callable[[Any], tuple[Facts, Named]]]] = {
-    BeamModel: ("beam", _beam),
-    EndpointModel: ("endpoint", _endpoint),
-    ColourModel: ("colour", _colour),
-    Blend: ("blend", _blend),
-    Matcher: ("matcher", _matcher),
+def _with_table(model: Tabled, arrays: Named) -> Tabled:
+    twin = deepcopy(model)
+    twin.table = arrays["table"]
+    return twin
+
+
+def _with_background(model: ColourModel, arrays: Named) -> ColourModel:
+    return ColourModel(model.layout, replace(model.fit, background=arrays["background"]))
+
+
+def _with_parts(model: Blend, arrays: Named) -> Blend:
+    twin = deepcopy(model)
+    for name in model.parts:
+        own = {k.removeprefix(f"{name}."): v for k, v in arrays.items() if k.startswith(f"{name}.")}
+        twin.parts[name] = with_arrays(model.part(name), own)
+    return twin
+
+
+def _with_state(model: Matcher, arrays: Named) -> Matcher:
+    twin = deepcopy(model)
+    sizes = {name: tensor.shape for name, tensor in model.state_dict().items()}
+    twin.load_state_dict({name: torch.from_numpy(arrays[name]).reshape(sizes[name]) for name in sizes})
+    return twin
+
+
+class _Kind(NamedTuple):
+    name: str
+    describe: Callable[[Any], tuple[Facts, Named]]
+    with_arrays: Callable[[Any, Named], ObservationModel]
+
+
+_KINDS: Mapping[type[ObservationModel], _Kind] = {
+    BeamModel: _Kind("beam", _beam, _with_table),
+    EndpointModel: _Kind("endpoint", _endpoint, _with_table),
+    ColourModel: _Kind("colour", _colour, _with_background),
+    Blend: _Kind("blend", _blend, _with_parts),
+    Matcher: _Kind("matcher", _matcher, _with_state),
 }
 
 
@@ -78,8 +112,13 @@ def robot_model(model: ObservationModel) -> tuple[Facts, Named]:
         InputError: a kind of model the robot cannot run.
     """
     if type(model) not in _KINDS:
-        known = " or ".join(name for name, _ in _KINDS.values())
+        known = " or ".join(kind.name for kind in _KINDS.values())
         raise InputError("the robot cannot run this", expected=known, got=type(model).__name__)
-    kind, describe = _KINDS[type(model)]
-    facts, arrays = describe(model)
-    return {kind: facts}, {name: np.asarray(array, order="C") for name, array in arrays.items()}
+    kind = _KINDS[type(model)]
+    facts, arrays = kind.describe(model)
+    return {kind.name: facts}, {name: np.asarray(array, order="C") for name, array in arrays.items()}
+
+
+def with_arrays(model: ObservationModel, arrays: Named) -> ObservationModel:
+    """A copy of a model with other numbers, named and shaped as `robot_model` names and shapes them."""
+    return _KINDS[type(model)].with_arrays(model, arrays)

@@ -11,19 +11,16 @@ from dataclasses import dataclass, field
 import numpy as np
 from numpy.typing import NDArray
 
-from learnfilter.core.errors import ConfigError
-from learnfilter.movers.contract import Footprint, Motion, clear_motions, free_range
-
-MOTIONS = (
-    Motion(0.5, 0.0, 0.0),
-    Motion(0.25, 0.0, 0.0),
-    Motion(0.25, 0.0, np.pi / 8),
-    Motion(0.25, 0.0, -np.pi / 8),
-    Motion(0.0, 0.0, np.pi / 8),
-    Motion(0.0, 0.0, -np.pi / 8),
-    Motion(0.0, 0.0, np.pi / 4),
-    Motion(0.0, 0.0, -np.pi / 4),
+from learnfilter.movers.contract import Situation
+from learnfilter.runtime.moves import (
+    MOTIONS,
+    Footprint,
+    Motion,
+    check_motions,
+    clear_motions,
+    free_range,
 )
+
 ROOM_M = 3.0  # more room ahead than this attracts no more: less makes it shy of nothing but walls
 STRAIGHT = 3.0  # how much more a straight motion is liked; at one it zigzags, far above it never explores
 
@@ -42,19 +39,11 @@ class Wander:
     _side: float = field(default=0.0, init=False, repr=False)  # of the turn that goes on; 0 while it travels
 
     def __post_init__(self) -> None:
-        sides = {np.sign(m.turn_rad) for m in self.motions if not m.travels}
-        if not {-1.0, 1.0} <= sides:
-            raise ConfigError(
-                "a blocked robot could not turn away",
-                place="mover.motions",
-                expected="a turn on the spot to either side",
-                got=self.motions,
-            )
+        check_motions(self.motions)
 
-    def next(
-        self, depth_m: NDArray[np.floating], bearings_rad: NDArray[np.floating], rng: np.random.Generator
-    ) -> Motion:
+    def next(self, situation: Situation, rng: np.random.Generator) -> Motion:
         """See `Mover.next`."""
+        depth_m, bearings_rad = situation.depth_m, situation.bearings_rad
         clear = clear_motions(self.motions, depth_m, bearings_rad, self.footprint)
         ways = [m for m, free in zip(self.motions, clear, strict=True) if free and m.travels]
         if ways:
@@ -70,8 +59,7 @@ class Wander:
         """Length of the motion times the room it then faces."""
         facing = np.array([motion.turn_rad - self.footprint.mount[2]])
         room = min(float(free_range(facing, depth_m, bearings_rad)[0][0]), ROOM_M)
-        length = float(np.hypot(motion.forward_m, motion.left_m))
-        return length * (room + 1e-3) * (STRAIGHT if motion.turn_rad == 0 else 1.0)
+        return motion.length_m * (room + 1e-3) * (STRAIGHT if motion.turn_rad == 0 else 1.0)
 
 
 def _roomier_side(depth_m: NDArray, bearings_rad: NDArray, rng: np.random.Generator) -> float:

@@ -1,5 +1,6 @@
 """Pictures of plans and drives, and a run's page: one HTML file that works from a disk without a network."""
 
+from learnfilter.report.drive_model import Story, Timeline, Trail, TrailMap
 from learnfilter.report.model import (
     Chart,
     Column,
@@ -29,8 +30,12 @@ __all__ = [
     "Placement",
     "RunPage",
     "SiteMap",
+    "Story",
     "Table",
+    "Timeline",
     "Track",
+    "Trail",
+    "TrailMap",
     "belief_image",
     "draw_plan",
     "draw_replay",

@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 
 from learnfilter.core.shapes import check
 from learnfilter.plan.floorplan import FloorPlan
+from learnfilter.report.drive_model import Story, Timeline, TrailMap
 
 
 class PlaceNote(Protocol):
@@ -227,6 +228,8 @@ class RunPage:
         confidence: how sure that is, and on what evidence.
         job: what the run was asked to do.
         episodes: drives to watch.
+        trail_maps: drives on the plan.
+        timelines, stories: what happened on them.
         maps: plans with notes.
         tables, forests: the comparison.
         charts: curves.
@@ -242,6 +245,9 @@ class RunPage:
     confidence: str
     job: str
     episodes: tuple[Episode, ...] = ()
+    trail_maps: tuple[TrailMap, ...] = ()
+    timelines: tuple[Timeline, ...] = ()
+    stories: tuple[Story, ...] = ()
     maps: tuple[SiteMap, ...] = ()
     tables: tuple[Table, ...] = ()
     forests: tuple[Forest, ...] = ()

@@ -11,8 +11,10 @@ from learnfilter.report.markup import Markup, join, tag
 from learnfilter.report.model import RunPage
 from learnfilter.report.palette import LOOKS, scale_colours
 from learnfilter.report.player import player
-from learnfilter.report.sections import cautions, headline, provenance, section, table
+from learnfilter.report.sections import cautions, headline, provenance, section, story, table
 from learnfilter.report.svg import forest_plot, line_chart, styles_of
+from learnfilter.report.timeline import timeline
+from learnfilter.report.trails import trail_map
 
 # The browser itself refuses whatever is not inside the file.
 POLICY = "default-src 'none'; img-src data:; style-src 'unsafe-inline'; script-src 'unsafe-inline'"
@@ -28,10 +30,15 @@ def write_page(page: RunPage, path: str | Path) -> None:
 def render_page(page: RunPage) -> str:
     """The page as HTML."""
     models = [track.model for episode in page.episodes for track in episode.tracks]
-    styles = styles_of(models + [curve.label for chart in page.charts for curve in chart.curves])
+    trails = [trail.label for drawn in page.trail_maps for trail in drawn.trails]
+    styles = styles_of(models + trails + [curve.label for chart in page.charts for curve in chart.curves])
     players = [player(episode, n, styles) for n, episode in enumerate(page.episodes, 1)]
     parts = {
         "belief": section("belief", "Watch the belief", _chooser(page), *players),
+        "trail": section("trail", "Where the robot was", *(trail_map(m, styles) for m in page.trail_maps)),
+        "happened": section(
+            "happened", "What happened", *map(timeline, page.timelines), *map(story, page.stories)
+        ),
         "site": section("site", "The site", *(site_map(m) for m in page.maps)),
         "comparison": section(
             "comparison",
@@ -81,7 +88,14 @@ def _ramp(look: str) -> str:
 
 def _symbols(page: RunPage) -> Markup:
     """Every plan of the page, drawn once, and the hatching of unmapped area."""
-    plans = {p.content_hash(): p for p in [e.plan for e in page.episodes] + [m.plan for m in page.maps]}
+    plans = {
+        p.content_hash(): p
+        for p in (
+            *(e.plan for e in page.episodes),
+            *(m.plan for m in page.trail_maps),
+            *(m.plan for m in page.maps),
+        )
+    }
     hatch = tag(
         "pattern",
         tag("path", d="M0 .5H.5"),

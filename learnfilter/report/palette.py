@@ -44,6 +44,22 @@ LINE_STYLES = (
 )
 
 
+@dataclass(frozen=True)
+class PatchLook:
+    """Colour (pages take theirs from the style sheet), what it says, and whether the square is filled."""
+
+    colour: str
+    words: str
+    filled: bool
+
+
+# What is gone leaves an empty square, what is new fills one: told apart without colour.
+PATCH_LOOKS = {
+    "gone": PatchLook("#7b3fb5", "not as drawn: looked through", False),
+    "new": PatchLook("#e69f00", "something new here", True),
+}
+
+
 def mass_levels(mass: NDArray) -> NDArray[np.uint8]:
     """Probability of a cell to a level in 0..LEVELS-1: logarithmic from MASS_FLOOR to 1."""
     part = 1 - np.log(np.maximum(mass, MASS_FLOOR)) / np.log(MASS_FLOOR)

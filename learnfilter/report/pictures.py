@@ -11,16 +11,17 @@ from matplotlib.axes import Axes
 from matplotlib.collections import LineCollection, PathCollection
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
-from matplotlib.patches import Patch
+from matplotlib.patches import Patch, Rectangle
 from matplotlib.path import Path as Outline
 from matplotlib.transforms import ScaledTranslation
 from numpy.typing import NDArray
 
 from learnfilter.core.files import whole_file
-from learnfilter.core.shapes import check
 from learnfilter.plan.floorplan import DOOR, OPEN, SHUT, SOLID, UNKNOWN, WALL, WINDOW, FloorPlan
 from learnfilter.report.drawing import hex_colour
+from learnfilter.report.drive_model import PlacePatch, Trail, TrailMap
 from learnfilter.report.model import PlaceNote
+from learnfilter.report.palette import LINE_STYLES, PATCH_LOOKS
 from learnfilter.report.svg import round_length
 
 CASING, PLAIN_WALL, SOLID_FILL, WINDOW_BLUE = "#333a45", "#9aa1ab", "#d3cfc4", "#2f8fc4"
@@ -64,51 +65,57 @@ def draw_plan(
     _finish(figure, axes, handles, path_png)
 
 
-def draw_replay(
-    plan: FloorPlan,
-    estimates: NDArray,
-    path_png: str | Path,
-    *,
-    entropy_nats: NDArray,
-    reference: NDArray | None = None,
-    locked_at: int | None = None,
-    lost: NDArray | None = None,
-    title: str | None = None,
-) -> None:
-    """Draw what a filter made of a drive.
+def draw_replay(drawn: TrailMap, path_png: str | Path) -> None:
+    """Draw what one or several filters made of a drive.
 
     Args:
-        plan: of the site.
-        estimates: [t 3] x_m, y_m, heading_rad.
+        drawn: a single trail is coloured by its entropy, several have a line style each.
         path_png: file to write, whole or not at all.
-        entropy_nats: [t] how undecided the filter was; colours the trail.
-        reference: [t 3] poses known from elsewhere, NaN where unknown.
-        locked_at: step at which the filter locked, or None if it never did.
-        lost: [t] True where the watch says that the robot is lost.
-        title: instead of the plan's name.
     """
-    sizes = check("estimates", estimates, "t c", c=3)
-    check("entropy_nats", entropy_nats, "t", t=sizes["t"])
-    if lost is not None:
-        check("lost", lost, "t", t=sizes["t"])
-    figure, axes = _sheet(plan, title or plan.name)
-    handles = _draw_walls(axes, plan)
-    if reference is not None:
-        check("reference", reference, "t c", **sizes)
-        x, y = reference[:, 0], reference[:, 1]
+    figure, axes = _sheet(drawn.plan, drawn.title)
+    handles = _draw_walls(axes, drawn.plan) + _draw_patches(axes, drawn.patches)
+    if drawn.reference is not None:
+        x, y = drawn.reference[:, 0], drawn.reference[:, 1]
         handles += axes.plot(x, y, color="black", lw=1.1, ls=":", zorder=5, label="reference pose")
-    axes.plot(estimates[:, 0], estimates[:, 1], color="#888888", lw=0.7, zorder=5)
-    dots = axes.scatter(estimates[:, 0], estimates[:, 1], c=entropy_nats, cmap="viridis_r", s=22, zorder=6)
-    figure.colorbar(dots, ax=axes, label="entropy of the belief, nats", shrink=0.6, pad=0.02)
-    if lost is not None and np.any(lost):
-        where = estimates[np.asarray(lost, dtype=bool)]
+    if len(drawn.trails) == 1:
+        x, y, _ = drawn.trails[0].pose.T
+        axes.plot(x, y, color="#888888", lw=0.7, zorder=5)
+        dots = axes.scatter(x, y, c=drawn.trails[0].entropy_nats, cmap="viridis_r", s=22, zorder=6)
+        figure.colorbar(dots, ax=axes, label="entropy of the belief, nats", shrink=0.6, pad=0.02)
+    else:
+        handles += [_styled(axes, trail, n % len(LINE_STYLES)) for n, trail in enumerate(drawn.trails)]
+    lost = np.concatenate([trail.pose[np.asarray(trail.lost, bool)] for trail in drawn.trails])
+    if len(lost):
         look = {"marker": "x", "s": 46, "color": "#c65300", "zorder": 7, "label": "lost"}
-        handles.append(axes.scatter(where[:, 0], where[:, 1], **look))
-    if locked_at is not None:
-        x, y, _ = estimates[locked_at]
+        handles.append(axes.scatter(lost[:, 0], lost[:, 1], **look))
+    locks = np.concatenate([trail.locks for trail in drawn.trails])
+    if len(locks):
         look = {"marker": "*", "ms": 17, "mfc": "white", "mec": "black", "ls": "none", "zorder": 8}
-        handles += axes.plot([x], [y], **look, label=f"locked at strip {locked_at + 1}")
+        handles += axes.plot(locks[:, 0], locks[:, 1], **look, label="locked here")
     _finish(figure, axes, handles, path_png)
+
+
+def _styled(axes: Axes, trail: Trail, style: int) -> Line2D:
+    look = LINE_STYLES[style]
+    dash = "solid" if look.dash == "none" else (0, tuple(float(length) / 2 for length in look.dash.split()))
+    x, y, _ = trail.pose.T
+    (line,) = axes.plot(x, y, color=look.colour, ls=dash, lw=1.8, zorder=6, label=_plain(trail.label))
+    return line
+
+
+def _draw_patches(axes: Axes, patches: Sequence[PlacePatch]) -> list[Patch]:
+    """Draw squares that disagree; return what the legend needs."""
+    handles = []
+    for kind, look in PATCH_LOOKS.items():
+        own = [patch for patch in patches if patch.kind == kind]
+        face = {"facecolor": look.colour if look.filled else "none", "alpha": 0.6 if look.filled else 1.0}
+        style = {**face, "edgecolor": look.colour, "lw": 1.6, "ls": "solid" if look.filled else "dashed"}
+        for patch in own:
+            corner = (patch.x_m - patch.side_m / 2, patch.y_m - patch.side_m / 2)
+            axes.add_patch(Rectangle(corner, patch.side_m, patch.side_m, **style, zorder=4))
+        if own:
+            handles.append(Patch(label=look.words, **style))
+    return handles
 
 
 def _sheet(plan: FloorPlan, title: str) -> tuple[Figure, Axes]:

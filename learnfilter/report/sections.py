@@ -6,6 +6,7 @@ import math
 from collections.abc import Iterable
 
 from learnfilter.core.notice import SAFETY_NOTICE
+from learnfilter.report.drive_model import Story
 from learnfilter.report.markup import Markup, join, tag
 from learnfilter.report.model import Cell, Column, Interval, RunPage, Table
 from learnfilter.report.svg import interval_text
@@ -44,6 +45,12 @@ def table(content: Table) -> Markup:
     return join(
         [tag("div", whole, class_="scroll", tabindex=0, role="region", aria_label=content.title), note]
     )
+
+
+def story(content: Story) -> Markup:
+    """Sentences as a list, in order."""
+    items = (tag("li", sentence) for sentence in content.sentences)
+    return tag("div", tag("h3", content.title), tag("ol", *items, class_="findings"), class_="story")
 
 
 def _number(cell: Cell) -> float:

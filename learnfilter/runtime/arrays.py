@@ -33,16 +33,16 @@ class Arrays:
         except (SafetensorError, KeyError, ValueError) as error:
             raise BundleError(f"unreadable arrays ({error})", file=file) from error
 
-    def take(
-        self, name: str, *shape: int | None, dtype: Any = np.float32, finite: bool = True
-    ) -> NDArray[Any]:
+    def take(self, name: str, *shape: int | None, dtype: Any = np.float32) -> NDArray[Any]:
         """Take an array out.
+
+        Where floats are asked for and bytes (int8) are stored, they are multiplied by the array
+        `<name>.scale`, which has as many axes, each of their length or of one.
 
         Args:
             name: of the array.
             shape: size of each axis, None for any.
-            dtype: what it is converted to.
-            finite: whether infinity is refused too.
+            dtype: what it is converted to; None leaves it as it is stored.
 
         Raises:
             BundleError: it is missing, has another shape or another kind of number, or is not finite.
@@ -59,13 +59,24 @@ class Arrays:
             raise BundleError(
                 "wrong shape", file=self.file, place=place, expected=expected, got=list(array.shape)
             )
-        if not np.can_cast(array.dtype, dtype, "same_kind"):
+        if dtype is not None and not np.can_cast(array.dtype, dtype, "same_kind"):
             raise BundleError(
                 "wrong kind of number", file=self.file, place=place, expected=np.dtype(dtype), got=array.dtype
             )
-        if np.isnan(array).any() or (finite and np.isinf(array).any()):
+        if not np.isfinite(array).all():
             raise BundleError("not finite", file=self.file, place=place)
+        if array.dtype == np.int8 and dtype is not None and np.issubdtype(dtype, np.floating):
+            array = array * self._scale(name, array.shape)
         return np.asarray(array, dtype=dtype, order="C")
+
+    def _scale(self, name: str, shape: tuple[int, ...]) -> NDArray[np.float32]:
+        scale = self.take(f"{name}.scale", *(None for _ in shape))
+        if any(size not in (1, whole) for size, whole in zip(scale.shape, shape, strict=True)):
+            raise BundleError(
+                "wrong shape", file=self.file, place=f"{self._prefix}{name}.scale",
+                expected=f"axes of 1 or of {list(shape)}", got=list(scale.shape),
+            )  # fmt: skip
+        return scale
 
     def under(self, prefix: str) -> Arrays:
         """The same arrays, named from `prefix` on; taking there takes here."""

@@ -1,8 +1,8 @@
 """The bundle: what an engineer hands to the robot, read and checked.
 
 A folder of `manifest.json` (described by `manifest.schema.json` beside this file), `weights.safetensors`,
-`site.safetensors` and `vectors.npz`.  The manifest holds the digest of every other file and of itself,
-so whatever was cut, flipped or mixed up on the way is found here and named.
+`site.safetensors`, `vectors.npz`, `observe.onnx` and `step.onnx`.  The manifest holds the digest of every
+other file and of itself, so whatever was cut, flipped or mixed up on the way is found here and named.
 """
 
 from __future__ import annotations
@@ -11,6 +11,7 @@ import hashlib
 import json
 from collections.abc import Mapping
 from dataclasses import dataclass
+from itertools import pairwise
 from pathlib import Path
 from typing import Any, NoReturn
 
@@ -22,9 +23,11 @@ from learnfilter.runtime.contract import RobotModel
 from learnfilter.runtime.models import build_model
 from learnfilter.runtime.motion import MotionNoise
 from learnfilter.runtime.schema import hold
-from learnfilter.runtime.site import RobotSite, read_site
+from learnfilter.runtime.site import RobotSite, read_site, reads_field
+from learnfilter.runtime.watch import Watch
 
-SCHEMA = 2  # 2: a step weighs the mean over each cell and heading bin
+SCHEMA = 3  # 3: rings are packed, weights may be float16 or int8, cells of little belief are skipped
+PRECISIONS = ("fp32", "fp16", "int8")
 MANIFEST, WEIGHTS, SITE, VECTORS = "manifest.json", "weights.safetensors", "site.safetensors", "vectors.npz"
 MANIFEST_SCHEMA = Path(__file__).with_name("manifest.schema.json")
 
@@ -37,11 +40,19 @@ class Weighing:
         after_m, after_rad: travel or turn since the last weighed strip.
         floor: share of belief spread over all live poses before each weighing: the chance, a strip,
             that the robot was carried off; above zero, so that no strip is impossible.
+        skip_below: cells whose predicted belief, like that of their eight neighbours, is below this share,
+            divided by the number of cells, are not weighed while the strip speaks for the others.
+        skip_ratio: how many times the belief that is skipped the evidence of the others must be, else every
+            cell is weighed.
+        restart: share of belief spread over all live poses where the robot is found to be lost.
     """
 
     after_m: float
     after_rad: float
     floor: float
+    skip_below: float = 1e-4
+    skip_ratio: float = 1e7
+    restart: float = 0.99
 
 
 @dataclass(frozen=True, eq=False)
@@ -56,6 +67,8 @@ class Bundle:
         weighing: when strips count.
         site: rings and distances.
         model: observation model with its weights.
+        watch: to begin with, from what is usual on drives where the plan is true; None where nothing was
+            measured.
     """
 
     folder: Path
@@ -65,31 +78,44 @@ class Bundle:
     weighing: Weighing
     site: RobotSite
     model: RobotModel
+    watch: Watch | None
 
 
 def load_bundle(folder: str | Path) -> Bundle:
     """Read and check a bundle.
 
     Raises:
-        BundleError: a file is absent, damaged, newer than this reader or does not fit the others.
+        BundleError: a file is absent, damaged, of another schema than this reader's or does not fit the
+            others.
     """
     folder = Path(folder)
     manifest = _read_manifest(folder / MANIFEST)
     contents = {name: _read_file(folder / name, said) for name, said in manifest["files"].items()}
+    return assemble(folder, manifest, contents[WEIGHTS], contents[SITE])
+
+
+def assemble(folder: Path, manifest: Mapping[str, Any], weights: bytes, site: bytes) -> Bundle:
+    """A bundle from a manifest that its schema allows and the contents of the files with arrays.
+
+    Raises:
+        BundleError: they do not fit each other.
+    """
     grid, layout = PoseGrid(**manifest["grid"]), _layout(manifest["layout"])
-    strip = _strip(manifest["strip"])
+    strip, watch = _strip(manifest["strip"]), manifest["watch"]
     _check_fit(folder / MANIFEST, strip, grid, layout)
-    weights = Arrays.parse(folder / WEIGHTS, contents[WEIGHTS])
-    model = build_model(layout, manifest["model"], weights)
-    weights.none_left()
+    _check_watch(folder / MANIFEST, watch)
+    arrays, rings = Arrays.parse(folder / WEIGHTS, weights), Arrays.parse(folder / SITE, site)
+    model = build_model(layout, manifest["model"], arrays)
+    arrays.none_left()
     return Bundle(
         folder,
         manifest,
         strip,
         MotionNoise(**manifest["noise"]),
         Weighing(**manifest["weighing"]),
-        read_site(grid, layout, manifest["site"]["field_scale"], Arrays.parse(folder / SITE, contents[SITE])),
+        read_site(grid, layout, manifest["site"], reads_field(manifest["model"]), rings),
         model,
+        None if watch is None else Watch.read(watch),
     )
 
 
@@ -116,6 +142,11 @@ def _read_manifest(path: Path) -> dict[str, Any]:
         raise BundleError(
             "the bundle is newer than this reader, or none", file=path, place="schema",
             expected=f"at most {SCHEMA}", got=schema,
+        )  # fmt: skip
+    if schema < SCHEMA:
+        raise BundleError(
+            "made by an earlier version: export it again", file=path, place="schema",
+            expected=str(SCHEMA), got=schema,
         )  # fmt: skip
     hold(manifest, json.loads(MANIFEST_SCHEMA.read_text(encoding="utf-8")), path)
     if seal(manifest) != manifest:
@@ -168,4 +199,16 @@ def _check_fit(file: Path, strip: Strip, grid: PoseGrid, layout: RingLayout) -> 
         ("layout.source", max(layout.source) < strip.columns, f"columns below {strip.columns}"),
     ):
         if not good:
+            raise BundleError("does not fit", file=file, place=place, expected=expected)
+
+
+def _check_watch(file: Path, watch: Mapping[str, Any] | None) -> None:
+    """Tables are looked up between their entries."""
+    if watch is None:
+        return
+    for name in ("searching", "locked"):
+        nats, share = watch[name]["nats"], watch[name]["share"]
+        rising = all(later > earlier for column in (nats, share) for earlier, later in pairwise(column))
+        if not rising or len(nats) != len(share):
+            place, expected = f"watch.{name}", "as many nats as shares, both rising"
             raise BundleError("does not fit", file=file, place=place, expected=expected)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Literal, NamedTuple
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 from learnfilter.core.estimate import Mode
 from learnfilter.core.poses import compose, inverse
 from learnfilter.runtime.motion import MotionNoise
+from learnfilter.runtime.standing import State
 
 
 class Estimate(NamedTuple):
@@ -22,9 +23,14 @@ class Estimate(NamedTuple):
         mass: belief within 0.5 m and 15 degrees of the best mode's mean, after the last weighed strip.
         entropy: of the belief, nats.
         modes: separate modes, heaviest first, carried like the pose, which is the first one's.
-        state: 'locked' after three weighed strips running with 0.9 of the mass near the best mode.
+        state: 'locked' after three weighed strips running with 0.9 of the mass near the best mode;
+            'lost' from an alarm, or from when a locked pose is given up, until the next lock; else 'searching'.
         weighed: whether this step's strip was weighed.
         log_evidence: nats of the last weighed strip given those before, up to the model's constant.
+        surprise: p-value of the last weighed strip where the plan is true, small where it surprises; NaN
+            without a calibrated watch.
+        alarm: whether this step's strip gave an alarm: surprises have added up.
+        anew: whether the search began anew with it, after an alarm or because a locked pose was given up.
     """
 
     pose: NDArray[np.float64]
@@ -32,9 +38,12 @@ class Estimate(NamedTuple):
     mass: float
     entropy: float
     modes: tuple[Mode, ...]
-    state: Literal["searching", "locked"]
+    state: State
     weighed: bool
     log_evidence: float
+    surprise: float
+    alarm: bool
+    anew: bool
 
 
 def base_mode(mode: Mode, pending: NDArray, mount: NDArray, noise: MotionNoise) -> Mode:

@@ -5,7 +5,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Mapping
 from typing import Any
 
 import numpy as np
@@ -15,10 +15,9 @@ from learnfilter.core.scale import RangeScale
 from learnfilter.core.strip import RingLayout
 from learnfilter.runtime.arrays import Arrays
 from learnfilter.runtime.contract import RobotModel
-from learnfilter.runtime.layers import Floats, Layer, LayerShape, place
+from learnfilter.runtime.layers import Floats, Layer, LayerShape
 from learnfilter.runtime.site import RobotSite
-
-CHUNK = 512  # cells whose features are computed at once: more needs memory, fewer is slower
+from learnfilter.runtime.table import Cells, RingTable
 
 
 class RobotMatcher(RobotModel):
@@ -49,17 +48,22 @@ class RobotMatcher(RobotModel):
 
     # ---- the plan's side ---------------------------------------------------------------------------
 
-    def read(self, site: RobotSite) -> Floats:
-        """[n p*channels] what each ring bearing answers, channels innermost."""
-        colour = self._palette_features(site.palette)[site.finish]
-        parts = [self._psi(site, colour, part) for part in _chunks(len(site.cells))]
-        return np.concatenate(parts).reshape(len(site.cells), -1)
+    def read(self, site: RobotSite, small: bool = False) -> RingTable:
+        """What each ring bearing answers; computed for a cell when it is first needed."""
+        palette = self._palette_features(site.palette)
+        return RingTable(
+            lambda part: self._psi(site, palette[site.finish[part]], part),
+            len(site.cells),
+            self.layout.bearings,
+            sum(self.ranks) + 2,
+            self.layout.finer().bearings // self.layout.finer().bearings_per_heading,
+            small,
+        )
 
     def _psi(self, site: RobotSite, colour: Floats, part: slice) -> Floats:
         """[n p channels] analytic features plus the learned residual, for some cells."""
         range_rank, colour_rank, extra = self.ranks
         range_m, unsure, nodes = site.range_m[part], site.unsure[part], self.scale.nodes
-        colour = colour[part]
         beyond = range_m > self.scale.max_range_m
         both = np.concatenate([self.expected, self.range_bias[:, None]], axis=1)
         lower, upper = self._hats(range_m)
@@ -88,10 +92,13 @@ class RobotMatcher(RobotModel):
 
     # ---- the strip's side --------------------------------------------------------------------------
 
-    def scores(self, depth_m: Floats, rgb: Floats, features: Floats) -> Floats:
-        """[n looks*h], one matrix product: the strip is rolled, not the rings."""
-        placed = place(self._phi(depth_m, rgb), self.layout.finer())
-        return features @ placed.reshape(features.shape[1], -1)
+    def scores(self, depth_m: Floats, rgb: Floats, features: RingTable, cells: Cells) -> Floats:
+        """[looks*h k]; the strip is turned, not the rings."""
+        asked = np.zeros((self.layout.bearings, sum(self.ranks) + 2), np.float32)
+        asked[(self.layout.finer().first + np.arange(self.layout.columns)) % self.layout.bearings] = (
+            self._phi(depth_m, rgb)
+        )
+        return features.scores(asked, cells)
 
     def _phi(self, depth_m: Floats, rgb: Floats) -> Floats:
         """[w channels] what the strip asks of each ring bearing it looks at."""
@@ -172,7 +179,3 @@ def matcher_layers(facts: Mapping[str, Any]) -> list[LayerShape]:
 def _between(table: Floats, lower: NDArray[np.int64], upper: Floats) -> Floats:
     """Rows of `table` interpolated between a node and the one above it: [... k]."""
     return table[lower] * (1 - upper[..., None]) + table[lower + 1] * upper[..., None]
-
-
-def _chunks(count: int) -> Iterator[slice]:
-    return (slice(begin, begin + CHUNK) for begin in range(0, count, CHUNK))

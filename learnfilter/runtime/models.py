@@ -19,6 +19,7 @@ from learnfilter.runtime.contract import RobotModel
 from learnfilter.runtime.layers import Floats, place
 from learnfilter.runtime.matcher import RobotMatcher
 from learnfilter.runtime.site import RobotSite
+from learnfilter.runtime.table import Cells
 
 Facts = Mapping[str, Any]
 
@@ -30,16 +31,16 @@ class RobotBeam(RobotModel):
         self.layout, self.scale = layout, RangeScale(**facts["scale"])
         self.table = arrays.take("table", self.scale.nodes + 1, self.scale.nodes + 2)
 
-    def read(self, site: RobotSite) -> NDArray[np.int64]:
+    def read(self, site: RobotSite, small: bool = False) -> NDArray[np.int64]:
         """[p n] expected node; `nodes` beyond reach, `nodes + 1` where unsure."""
         beyond = site.range_m > self.scale.max_range_m
         node = np.where(beyond, self.scale.nodes, self._node(np.where(beyond, 0.0, site.range_m)))
         return np.ascontiguousarray(np.where(site.unsure, self.scale.nodes + 1, node).T)
 
-    def scores(self, depth_m: Floats, rgb: Floats, features: NDArray[np.int64]) -> Floats:
+    def scores(self, depth_m: Floats, rgb: Floats, features: NDArray[np.int64], cells: Cells) -> Floats:
         measured = np.where(np.isnan(depth_m), self.scale.nodes, self._node(np.nan_to_num(depth_m)))
         rows = self.table[measured] * self.layout.present()[:, None]
-        return sum_along_rings(rows, features, self.layout)
+        return sum_along_rings(rows, features[:, cells], self.layout)
 
     def _node(self, range_m: NDArray[np.floating]) -> NDArray[np.int64]:
         clipped = np.clip(range_m, 0.0, self.scale.max_range_m)
@@ -53,7 +54,9 @@ class RobotColour(RobotModel):
         self.layout, self.facts = layout, facts
         self.background = arrays.take("background", None, 3, dtype=np.float64)
 
-    def read(self, site: RobotSite) -> tuple[NDArray[np.int64], Floats, NDArray[np.float64]]:
+    def read(
+        self, site: RobotSite, small: bool = False
+    ) -> tuple[NDArray[np.int64], Floats, NDArray[np.float64]]:
         """Finish [p n] (unknown: f), log colours [f 3] and log normalisers [f]."""
         colours = np.log(site.palette + self.facts["dark"])
         kernel = self._kernel(self.background, colours)
@@ -61,7 +64,7 @@ class RobotColour(RobotModel):
         finish = np.where(site.finish < 0, len(colours), site.finish).T
         return np.ascontiguousarray(finish, np.int64), colours, normaliser
 
-    def scores(self, depth_m: Floats, rgb: Floats, features: Any) -> Floats:
+    def scores(self, depth_m: Floats, rgb: Floats, features: Any, cells: Cells) -> Floats:
         finish, colours, normaliser = features
         seen = np.isfinite(rgb).all(axis=1) & self.layout.present()
         x = np.log(np.maximum(np.nan_to_num(rgb), 0.0) + self.facts["dark"])
@@ -69,7 +72,7 @@ class RobotColour(RobotModel):
         x = x - self.facts["level_power"] * (own - self.facts["level"])
         evidence = (self.facts["weight"] * self._kernel(x, colours) - normaliser) * seen[:, None]
         table = np.pad(evidence, ((0, 0), (0, 1)))  # an unknown finish: no evidence
-        return sum_along_rings(table.astype(np.float32), finish, self.layout)
+        return sum_along_rings(table.astype(np.float32), finish[:, cells], self.layout)
 
     def _kernel(self, x: NDArray[np.floating], y: NDArray[np.floating]) -> NDArray[np.floating]:
         square = ((x[:, None] - y) ** 2).sum(axis=-1)
@@ -83,7 +86,7 @@ class RobotEndpoint(RobotModel):
         self.layout, self.step_m, self.max_range_m = layout, facts["step_m"], facts["max_range_m"]
         self.table = arrays.take("table", None)
 
-    def read(self, site: RobotSite) -> Any:
+    def read(self, site: RobotSite, small: bool = False) -> Any:
         """Classes of distance on a field widened by the sensor's reach, and where each cell lies in it."""
         farthest = len(self.table) - 1
         classes = np.minimum(np.rint(site.field_m / self.step_m), farthest).astype(np.int64)
@@ -93,8 +96,9 @@ class RobotEndpoint(RobotModel):
         angles = self.layout.look_angles()
         return field, np.ravel_multi_index(corners.T, field.shape), angles, site.grid.cell_m, site.field_scale
 
-    def scores(self, depth_m: Floats, rgb: Floats, features: Any) -> Floats:
-        field, corner, angles, cell_m, scale = features
+    def scores(self, depth_m: Floats, rgb: Floats, features: Any, cells: Cells) -> Floats:
+        field, corners, angles, cell_m, scale = features
+        corner = corners[cells]
         evidence = self.table[field].ravel()
         used = np.isfinite(depth_m) & self.layout.present()
         reach_m = np.minimum(depth_m[used], self.max_range_m)
@@ -104,7 +108,7 @@ class RobotEndpoint(RobotModel):
         for heading, ends in zip(out, offsets, strict=True):
             for end in ends:
                 heading += evidence[corner + end]
-        return out.T
+        return out
 
 
 class RobotBlend(RobotModel):
@@ -117,13 +121,13 @@ class RobotBlend(RobotModel):
             for name, part in facts["parts"].items()
         }
 
-    def read(self, site: RobotSite) -> dict[str, Any]:
+    def read(self, site: RobotSite, small: bool = False) -> dict[str, Any]:
         """Features of every part."""
-        return {name: model.read(site) for name, (_, model) in self.parts.items()}
+        return {name: model.read(site, small) for name, (_, model) in self.parts.items()}
 
-    def scores(self, depth_m: Floats, rgb: Floats, features: dict[str, Any]) -> Floats:
+    def scores(self, depth_m: Floats, rgb: Floats, features: dict[str, Any], cells: Cells) -> Floats:
         return sum(
-            (exponent * model.scores(depth_m, rgb, features[name]))
+            (exponent * model.scores(depth_m, rgb, features[name], cells))
             for name, (exponent, model) in self.parts.items()
         )  # type: ignore[return-value]  # the schema asks for at least one part
 
@@ -144,9 +148,9 @@ def build_model(layout: RingLayout, model: Facts, arrays: Arrays) -> RobotModel:
 
 
 def sum_along_rings(rows: Floats, ring: NDArray[np.int64], layout: RingLayout) -> Floats:
-    """[n looks*h] sum over columns of `rows` [w e] at the class [p n] of the bearing each looks at."""
+    """[looks*h n] sum over columns of `rows` [w e] at the class [p n] of the bearing each looks at."""
     placed = place(rows, layout.finer())
     out = np.zeros((ring.shape[1], placed.shape[2]), np.float32)
     for table, classes in zip(placed, ring, strict=True):
         out += table[classes]
-    return out
+    return out.T

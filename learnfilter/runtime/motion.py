@@ -8,13 +8,14 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
 from learnfilter.core.grid import PoseGrid
+from learnfilter.runtime.part import Floats, Part
 
-Floats = NDArray[np.float32]
 SOFTNESS = 0.01  # cells^2; how gently noise gives way to interpolation
 LEAST_VARIANCE = 1e-6  # cells^2
 
@@ -44,44 +45,74 @@ class MotionNoise:
         )
 
 
+class _Kernels(NamedTuple):
+    """How one odometry reading moves each heading's plane: taps along rows and columns.
+
+    Attributes:
+        shift: [2 h] rows and columns moved, in cells.
+        first: [2 h] offset of the first tap.
+        weights: two of [h k], of the taps.
+    """
+
+    shift: NDArray[np.floating]
+    first: NDArray[np.int64]
+    weights: tuple[Floats, Floats]
+
+    def reach(self) -> tuple[int, int]:
+        """How many rows and columns mass can move."""
+        ends = (
+            (first, first + weights.shape[1] - 1)
+            for first, weights in zip(self.first, self.weights, strict=True)
+        )
+        rows, columns = (int(max(np.abs(low).max(), np.abs(high).max())) for low, high in ends)
+        return rows, columns
+
+
 def predict(
-    belief: Floats, odometry: Floats, grid: PoseGrid, live: NDArray[np.bool_], noise: MotionNoise
-) -> Floats:
+    belief: Part, odometry: Floats, grid: PoseGrid, live: NDArray[np.bool_], noise: MotionNoise
+) -> Part:
     """The belief after one odometry reading, p(pose_t | strips before t).
 
     Args:
-        belief: [h r c] probabilities, zero off the live cells.
+        belief: probabilities, zero off the live cells.
         odometry: [3] forward_m, left_m, turn_rad of the sensor, in its previous frame.
         grid: the lattice.
-        live: [r c].
+        live: [r c] of the whole lattice.
         noise: of odometry.
 
     Returns:
-        [h r c], summing to one; uniform over live poses where all mass was lost into walls.
+        Probabilities summing to one; uniform over live poses where all mass was lost into walls.
     """
     travel_variance, turn_variance = noise.variances(odometry)
+    kernels = _kernels(odometry, travel_variance, grid)
+    room = belief.grown(*kernels.reach(), grid)
+    moved, live_here = np.empty_like(room.planes), live[room.window]
+    for h, plane in enumerate(room.planes):
+        half = _shift(plane, kernels.first[0, h], kernels.weights[0][h])
+        moved[h] = _shift(half.T, kernels.first[1, h], kernels.weights[1][h]).T
+        moved[h] *= clear_path(live_here, float(kernels.shift[0, h]), float(kernels.shift[1, h]))
+    kept = float(moved.sum(dtype=np.float64))
+    if kept <= 1e-12:
+        share = np.float32(1.0 / (np.count_nonzero(live) * grid.headings))
+        return Part(np.broadcast_to(live * share, grid.shape), 0, 0)
+    moved /= np.float32(kept)
+    step = grid.heading_step_rad
+    first, weights = _taps(np.array([odometry[2] / step]), np.array([turn_variance / step**2]))
+    turned = (np.roll(moved, first[0] + k, axis=0) * weight for k, weight in enumerate(weights[0]))
+    return room._replace(planes=sum(turned, start=np.zeros_like(moved)))
+
+
+def _kernels(odometry: Floats, travel_variance: float, grid: PoseGrid) -> _Kernels:
     heading = grid.heading_centres().astype(np.float32)
-    forward, left, turn = odometry
+    forward, left, _ = odometry
     shift_c = (forward * np.cos(heading) - left * np.sin(heading)) / np.float32(grid.cell_m)
     shift_r = (forward * np.sin(heading) + left * np.cos(heading)) / np.float32(grid.cell_m)
-    step = grid.heading_step_rad
-    across = (forward**2 + left**2) * step**2 / 12 / grid.cell_m**2
+    across = (forward**2 + left**2) * grid.heading_step_rad**2 / 12 / grid.cell_m**2
     direction = np.arctan2(shift_r, shift_c)
     base = travel_variance / grid.cell_m**2
     first_r, weights_r = _taps(shift_r, base + across * np.cos(direction) ** 2)
     first_c, weights_c = _taps(shift_c, base + across * np.sin(direction) ** 2)
-    moved = np.empty_like(belief)
-    for h, plane in enumerate(belief):
-        half = _shift(plane, first_r[h], weights_r[h])
-        moved[h] = _shift(half.T, first_c[h], weights_c[h]).T
-        moved[h] *= clear_path(live, float(shift_r[h]), float(shift_c[h]))
-    kept = float(moved.sum(dtype=np.float64))
-    if kept <= 1e-12:
-        moved[:], kept = live, float(live.sum()) * grid.headings
-    moved /= np.float32(kept)
-    first, weights = _taps(np.array([turn / step]), np.array([turn_variance / step**2]))
-    turned = (np.roll(moved, first[0] + k, axis=0) * weight for k, weight in enumerate(weights[0]))
-    return sum(turned, start=np.zeros_like(moved))
+    return _Kernels(np.stack([shift_r, shift_c]), np.stack([first_r, first_c]), (weights_r, weights_c))
 
 
 def _taps(mean: NDArray[np.floating], variance: NDArray[np.floating]) -> tuple[NDArray[np.int64], Floats]:
@@ -90,24 +121,21 @@ def _taps(mean: NDArray[np.floating], variance: NDArray[np.floating]) -> tuple[N
     first = np.rint(mean) - reach
     # second differences in float32 are noise of 1e-7 where tails, and the filter's floor, are far smaller
     mean, variance = mean.astype(np.float64), variance.astype(np.float64)
-    weights = shift_weights(mean, variance, first[:, None] + np.arange(2 * reach + 1)).clip(min=0)
+    weights = shift_weights(mean, variance, first, 2 * reach + 1).clip(min=0)
     return first.astype(np.int64), (weights / weights.sum(axis=1, keepdims=True)).astype(np.float32)
 
 
 def shift_weights(
-    mean: NDArray[np.floating], variance: NDArray[np.floating], offsets: NDArray[np.floating]
+    mean: NDArray[np.floating], variance: NDArray[np.floating], first: NDArray[np.floating], taps: int
 ) -> NDArray[np.float64]:
-    """Weights [i k] of integer offsets [i k] for shifts of `mean` cells [i] with `variance` cells^2 [i]."""
+    """Weights [i k] of `taps` offsets from `first` [i], for shifts of mean [i] cells, variance [i] cells^2."""
     rest = variance - _interpolation_variance(mean, np.maximum(variance - 1 / 6, 0.0))
     spread = np.sqrt(SOFTNESS * np.logaddexp(0.0, rest / SOFTNESS) + LEAST_VARIANCE)[:, None]
-
-    def ramp(x: NDArray[np.float64]) -> NDArray[np.float64]:
-        """Integral of the normal distribution function: a smoothed max(x, 0)."""
-        u = x / spread
-        return x * _normal_cdf(u) + spread * np.exp(-0.5 * u * u) / math.sqrt(2 * math.pi)
-
-    x = offsets - mean[:, None]
-    return ramp(x + 1) - 2 * ramp(x) + ramp(x - 1)
+    x = (first - mean)[:, None] + np.arange(-1, taps + 1)
+    u = x / spread
+    # integral of the normal distribution function, a smoothed max(x, 0); its second difference is a tap
+    ramp = x * _normal_cdf(u) + spread * np.exp(-0.5 * u * u) / math.sqrt(2 * math.pi)
+    return ramp[:, 2:] - 2 * ramp[:, 1:-1] + ramp[:, :-2]
 
 
 def _interpolation_variance(

@@ -14,6 +14,7 @@ from typing import Any
 from learnfilter.core.errors import BundleError
 
 _TYPES: Mapping[str, tuple[type, ...]] = {
+    "null": (type(None),),
     "object": (dict,),
     "array": (list,),
     "string": (str,),
@@ -28,7 +29,7 @@ def hold(value: Any, schema: Mapping[str, Any], file: Path, place: str = "") -> 
 
     Args:
         value: parsed JSON.
-        schema: type, enum, bounds, sizes, items, properties, required, additionalProperties.
+        schema: type (one or a list), enum, bounds, sizes, items, properties, required, additionalProperties.
         file: for messages.
         place: where in the file the value stands.
 
@@ -42,7 +43,8 @@ def hold(value: Any, schema: Mapping[str, Any], file: Path, place: str = "") -> 
             raise BundleError("breaks the schema", file=file, place=place or None, expected=expected, got=got)
 
     if "type" in schema:
-        refuse_unless(_is(value, schema["type"]), schema["type"])
+        kinds = [schema["type"]] if isinstance(schema["type"], str) else schema["type"]
+        refuse_unless(any(_is(value, kind) for kind in kinds), " or ".join(kinds))
     if "enum" in schema:
         refuse_unless(value in schema["enum"], " or ".join(map(str, schema["enum"])))
     if isinstance(value, int | float) and not isinstance(value, bool):

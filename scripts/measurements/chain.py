@@ -18,7 +18,7 @@ import time
 from pathlib import Path
 from typing import Any
 
-import numpy as np
+from _runs import SEEDS, say, spread
 
 from learnfilter.app.threads import wait_passively
 
@@ -29,7 +29,6 @@ from learnfilter.ablation.study import Row, read_rows  # noqa: E402
 from learnfilter.ablation.verdict import column, drives_of  # noqa: E402
 from learnfilter.core.seeds import stream  # noqa: E402
 
-SEEDS = (0, 1, 2)
 RUNS = Path("runs/measure-chain")
 REAL_PLAN = Path("../shared/data/plans/westport-house-floor-3.geojson")
 # A training of seconds in which every stage still writes several checkpoints.
@@ -49,7 +48,7 @@ def main() -> None:
         "demo_minutes": spread([d["minutes"] for d in demos]),
         "peak_memory_gb": spread([d["gigabytes"] for d in demos]),
         **gains([d["folder"] for d in demos]),
-        **from_library(demos[0]["folder"]),
+        **untrained(demos[0]["folder"]),
         **real_plan([d["folder"] for d in demos]),
         "resume_identical": resume_identical(),
         "rays_vs_embreex": rays(),
@@ -59,10 +58,6 @@ def main() -> None:
 
 def command(*words: str) -> list[str]:
     return [sys.executable, "-m", "learnfilter.app.main", *words]
-
-
-def say(text: str) -> None:
-    print(f"chain: {text}", file=sys.stderr, flush=True)
 
 
 def demo(seed: int) -> dict[str, Any]:
@@ -80,11 +75,6 @@ def demo(seed: int) -> dict[str, Any]:
         minutes = (time.monotonic() - start) / 60
         cost.write_text(json.dumps({"minutes": minutes, "gigabytes": usage.ru_maxrss * 1024 / 1e9}))
     return {"folder": folder, **json.loads(cost.read_text())}
-
-
-def spread(values: list[float]) -> dict[str, float]:
-    """Mean with the least and greatest of a few runs."""
-    return {"value": float(np.mean(values)), "low": min(values), "high": max(values), "n": len(values)}
 
 
 def tagged(folders: list[Path]) -> list[Row]:
@@ -135,16 +125,13 @@ def gains(folders: list[Path]) -> dict[str, Any]:
     }
 
 
-def from_library(folder: Path) -> dict[str, Any]:
-    """Figures that need the models in this process: the untrained gap and the runtime's distance."""
+def untrained(folder: Path) -> dict[str, Any]:
+    """How far an untrained matcher is from the blend it is born from."""
     from dataclasses import replace
 
-    from learnfilter.app.exporting import filter_for, vector_drive
     from learnfilter.app.lattices import build_lattices
-    from learnfilter.app.models import LEARNED, settings_of, stored
+    from learnfilter.app.models import settings_of, stored
     from learnfilter.app.training import training_material, untrained_gap
-    from learnfilter.export.check import against_torch
-    from learnfilter.plan import read_plan
 
     settings = settings_of(folder)
     settings = replace(settings, site=replace(settings.site, file=None))
@@ -152,20 +139,7 @@ def from_library(folder: Path) -> dict[str, Any]:
     models = stored(folder, settings)
     train, held_out = training_material(settings).grounds(build_lattices(settings), stills=False)
     gap = untrained_gap(settings, models, train, held_out)
-    say("runtime against torch")
-    plan = read_plan(folder / "site.geojson")
-    drive = vector_drive(
-        plan, filter_for(settings, models[LEARNED], plan).strip, settings.grid.robot_radius_m, 1, 260
-    )
-    with tempfile.TemporaryDirectory() as scratch:
-        from learnfilter.app.exporting import export_bundle
-
-        export_bundle(settings, models[LEARNED], plan, Path(scratch) / "bundle")
-        apart = against_torch(
-            Path(scratch) / "bundle", filter_for(settings, models[LEARNED], plan), drive, 200
-        )
-    assert len(apart) == 200, len(apart)
-    return {"untrained_gap_nats": gap, "runtime_tv": float(apart.max())}
+    return {"untrained_gap_nats": gap}
 
 
 def real_plan(folders: list[Path]) -> dict[str, Any]:

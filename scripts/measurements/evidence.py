@@ -11,15 +11,13 @@ from __future__ import annotations
 
 import json
 import math
-import subprocess
-import sys
-import time
 from collections.abc import Callable, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
 from typing import Any
 
 import numpy as np
+from _runs import RUNS, SEEDS, command, say, spread, train
 
 from learnfilter.app.threads import wait_passively
 
@@ -31,8 +29,6 @@ from learnfilter.ablation.trust import trust  # noqa: E402
 from learnfilter.ablation.verdict import column, conditions_of, drives_of, under  # noqa: E402
 from learnfilter.core.seeds import stream  # noqa: E402
 
-SEEDS = (0, 1, 2)
-RUNS = Path("runs/measure-evidence")
 # As trained and parked are judged on more sites: what is said of confidence there asks for many strips.
 USUAL_SITES, SHIFTED_SITES, DRIVES, ROWS = 32, 16, 1, 44
 ORACLE_SITES = 24
@@ -82,28 +78,6 @@ def main() -> None:
     print(json.dumps(figures, indent=2))
 
 
-def say(text: str) -> None:
-    print(f"evidence: {text}", file=sys.stderr, flush=True)
-
-
-def command(*words: str) -> None:
-    """Run learnfilter; its own progress goes to standard error."""
-    words = (*words, f"runs={RUNS}")
-    subprocess.run([sys.executable, "-m", "learnfilter.app.main", *words], check=True, stdout=sys.stderr)
-
-
-def train(name: str, seed: int, *words: str) -> tuple[Path, float]:
-    """A training run and its minutes; kept, with its minutes, once it is complete."""
-    folder = RUNS / "train" / f"{name}-{seed}"
-    cost = RUNS / f"minutes-{name}-{seed}.json"
-    if not cost.exists():
-        say(f"train {name}-{seed}")
-        clock = time.monotonic()
-        command("train", f"name={name}-{seed}", f"seed={seed}", *words)
-        cost.write_text(json.dumps((time.monotonic() - clock) / 60))
-    return folder, json.loads(cost.read_text())
-
-
 def opponent(folder: Path) -> str:
     """The analytic model with the fewest nats on the run's validation drives."""
     nats = json.loads((folder / "summary.json").read_text())["results"]["validation_nats"]
@@ -133,11 +107,6 @@ def studied(folders: Sequence[Path], name: str, words: Sequence[str]) -> list[Ro
 
     with ThreadPoolExecutor(2) as pool:
         return [row for rows in pool.map(study, folders) for row in rows]
-
-
-def spread(values: Sequence[float]) -> dict[str, float]:
-    """Mean with the least and greatest of a few runs."""
-    return {"value": float(np.mean(values)), "low": min(values), "high": max(values), "n": len(values)}
 
 
 def gain(rows: Sequence[Row], key: str, sign: float = 1.0) -> Interval:

@@ -7,17 +7,18 @@ import pytest
 from omegaconf import OmegaConf
 from PIL import Image
 
-from learnfilter.app.build import build_conditions, build_plan, build_strip
+from learnfilter.app.build import build_conditions, build_footprint, build_motions, build_plan, build_strip
 from learnfilter.app.command import compose_settings
-from learnfilter.app.config import GridConfig, MotionConfig, StripConfig, flat, typed
+from learnfilter.app.config import GridConfig, MotionConfig, MoverConfig, StripConfig, flat, typed
 from learnfilter.app.paths import data_dir
 from learnfilter.app.verbs import VERBS
 from learnfilter.core.errors import ConfigError, PlanError
 from learnfilter.core.strip import lay_on_ring
+from learnfilter.runtime.moves import MOTIONS, Footprint
 from learnfilter.sim.conditions import Conditions
 
 CONFIGS = data_dir("configs")
-GROUPS = {"strip": StripConfig, "grid": GridConfig, "motion": MotionConfig}
+GROUPS = {"strip": StripConfig, "grid": GridConfig, "motion": MotionConfig, "mover": MoverConfig}
 
 
 def options(group: str) -> list[str]:
@@ -45,8 +46,13 @@ def test_every_shipped_option_is_valid(group, option):
 @pytest.mark.parametrize("verb", VERBS)
 def test_every_verb_has_settings_for_all_its_keys(verb):
     """Defaults live in the files alone, so each key must stand there."""
-    given = {"replay": ["bundle=some", "drive=some.csv"], "label": ["drive=some.csv"]}.get(verb, [])
-    composed = compose_settings(verb, ["site.file=some.geojson", *given])
+    plan = "site.file=some.geojson"
+    given = {
+        "replay": [plan, "bundle=some", "drive=some.csv"],
+        "label": [plan, "drive=some.csv"],
+        "verify": ["bundle=some"],
+    }
+    composed = compose_settings(verb, given.get(verb, [plan]))
     assert "???" not in flat(OmegaConf.to_container(composed)).values()
     typed(composed, VERBS[verb])
 
@@ -84,6 +90,29 @@ def test_the_colour_strip_looks_symmetrically_over_90_degrees_and_lies_on_the_de
         -sensor.bearings_rad[-1], abs=1e-12
     )  # exact but for rounding
     assert lay_on_ring(sensor, headings=32, bearings_per_heading=4).source == tuple(range(32))
+
+
+def mover(**changes: object) -> MoverConfig:
+    return typed(OmegaConf.merge(OmegaConf.load(CONFIGS / "mover" / "default.yaml"), changes), MoverConfig)
+
+
+def test_the_shipped_mover_is_what_movers_take_for_granted():
+    """The same motions to 1e-12, and the same margins."""
+    np.testing.assert_allclose(build_motions(mover()), MOTIONS, rtol=0, atol=1e-12)
+    assert build_footprint(mover(), build_strip(strip()), 0.2) == Footprint()
+
+
+@pytest.mark.parametrize(
+    ("changes", "place"),
+    [
+        ({"moves": [{"distance_m": 0.5, "turn_deg": 90.0}]}, r"mover\.moves"),
+        ({"price_nats_per_m": -1.0}, r"mover\.price_nats_per_m"),
+    ],
+)
+def test_a_mover_that_cannot_be_is_refused(changes, place):
+    """No turn on the spot; a price that pays for driving."""
+    with pytest.raises(ConfigError, match=place):
+        build_motions(mover(**changes))
 
 
 def test_as_trained_is_what_the_simulator_takes_for_granted():

@@ -9,7 +9,7 @@ from learnfilter.core.errors import DriveError
 from learnfilter.core.poses import compose
 from learnfilter.export.vectors import make_vectors, with_gaps
 from learnfilter.runtime.bundle import VECTORS
-from tests.shipping import STRIP, filter_of, rehearsed
+from tests.shipping import STRIP, filter_of, rehearsed, rendered
 
 
 @pytest.fixture(scope="module")
@@ -25,11 +25,51 @@ def test_at_least_fifty_whole_steps(vectors):
 
 
 def test_inputs_are_in_the_sensors_raw_order(vectors):
-    """What the drive's table holds, wherever a reading is left."""
-    expected = rehearsed()[1].depth_m[: len(vectors["depth_m"])]
+    """What the drives' tables hold, wherever a reading is left."""
+    jump = jump_of(vectors)
+    first, second = (drive.depth_m for drive in rendered()[1])
+    expected = np.vstack([first[:jump], second])[: len(vectors["depth_m"])]
     kept = np.isfinite(vectors["depth_m"])
     assert vectors["depth_m"].shape[1] == STRIP.columns
     np.testing.assert_array_equal(vectors["depth_m"][kept], expected[kept])
+
+
+def jump_of(vectors) -> int:
+    """The row to which the robot was carried: the only one but the first in which wheels stood still."""
+    still = np.flatnonzero((vectors["odometry"] == 0).all(axis=1))
+    assert still[0] == 0 and len(still) == 2
+    return int(still[1])
+
+
+def test_the_robot_is_carried_off_after_two_thirds(vectors):
+    """Time goes on and the wheels saw nothing, but the strips are of another drive."""
+    jump, weighed = jump_of(vectors), vectors["weighed"]
+    assert weighed[:jump].sum() / weighed.sum() == pytest.approx(2 / 3, abs=0.02)  # whole steps, of 74
+    assert (np.diff(vectors["time_s"]) > 0).all()
+    first, second = (drive.reference for drive in rendered()[1])
+    assert np.hypot(*(first[jump - 1] - second[0])[:2]) > 1.0
+
+
+def test_the_filter_takes_to_the_new_place(vectors):
+    """By its end it believes the second drive, so the vectors hold a recovery."""
+    row = len(vectors["pose"]) - 1
+    expected = rendered()[1][1].reference[row - jump_of(vectors)]
+    assert np.hypot(*(vectors["pose"][row] - expected)[:2]) < 0.5
+
+
+def test_the_state_is_lost_after_the_robot_was_carried_off(vectors):
+    """Numbers of states as the docstring has them; strips there surprise as a hundredth do."""
+    jump = jump_of(vectors)
+    rows = np.flatnonzero(vectors["weighed"])
+    after = rows[rows > jump][:5]
+    assert (vectors["state"][after] == 2).any() and set(vectors["state"].tolist()) <= {0, 1, 2}
+    assert (vectors["surprise"][after] < 0.05).any()
+
+
+def test_without_a_watch_nothing_surprises():
+    """The column is there, and NaN."""
+    made = make_vectors(filter_of("beam"), rendered()[1])
+    assert np.isnan(made["surprise"]).all() and len(made["surprise"]) == len(made["state"])
 
 
 def test_one_weighed_strip_is_all_missing(vectors):
@@ -60,12 +100,14 @@ def test_the_heaviest_poses_come_first_and_agree_with_the_whole(vectors):
         np.testing.assert_array_equal(belief.ravel()[vectors["top_pose"][step]], expected)
 
 
-def test_a_short_drive_is_refused():
+def test_one_whole_belief_is_there(vectors):
+    """After evidence and motion, and it is all there is; a second would not fit the bundle's budget."""
+    assert vectors["belief_step"].tolist() == [1]
+    np.testing.assert_allclose(vectors["belief"].sum(axis=(1, 2, 3)), 1.0, rtol=1e-5)  # float32 sums
+
+
+@pytest.mark.parametrize("rows", [1, 40])
+def test_short_drives_are_refused(rows):
     """Fewer than fifty weighed strips prove too little."""
-    drive = rehearsed()[1]
-    short = replace(
-        drive, time_s=drive.time_s[:40], odometry=drive.odometry[:40], depth_m=drive.depth_m[:40],
-        rgb=drive.rgb[:40], reference=None,
-    )  # fmt: skip
-    with pytest.raises(DriveError, match="at least 50 weighed strips"):
-        make_vectors(filter_of("beam"), short)
+    with pytest.raises(DriveError, match="more than 50 weighed strips"):
+        make_vectors(filter_of("beam"), [drive.part(0, rows) for drive in rendered()[1]])

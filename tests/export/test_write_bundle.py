@@ -1,6 +1,7 @@
 """Bundles are written whole or not at all, and again for another plan without training."""
 
 import json
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -11,16 +12,17 @@ from learnfilter.core.notice import SAFETY_NOTICE
 from learnfilter.export import bundle as writer
 from learnfilter.export import write_bundle
 from learnfilter.export.bundle import DEPTH_ONLY
+from learnfilter.export.onnx_files import OBSERVE, STEP
 from learnfilter.export.robot import robot_model
 from learnfilter.observe.contract import ObservationModel
 from learnfilter.runtime.bundle import MANIFEST, SITE, VECTORS, WEIGHTS, Weighing
-from tests.shipping import PROVENANCE, filter_of, rehearsed
+from tests.shipping import PROVENANCE, filter_of, rendered
 
-FILES = {MANIFEST, WEIGHTS, SITE, VECTORS}
+FILES = {MANIFEST, WEIGHTS, SITE, VECTORS, OBSERVE, STEP}
 
 
 def write(folder, kind="beam", family="offices", **more):
-    return write_bundle(folder, filter_of(kind, family), rehearsed(family)[1], PROVENANCE, **more)
+    return write_bundle(folder, filter_of(kind, family), rendered(family)[1], PROVENANCE, **more)
 
 
 def contents(folder):
@@ -35,10 +37,11 @@ def test_the_folder_holds_the_files_and_nothing_else(tmp_path):
     assert summary["bytes"] == sum(map(len, found.values()))
 
 
-def test_the_same_filter_gives_the_same_bytes(tmp_path):
+@pytest.mark.parametrize("precision", ["fp32", "int8"])
+def test_the_same_filter_gives_the_same_bytes(tmp_path, precision):
     """No clock, no order of a dictionary in any file."""
     for name in ("a", "b"):
-        write(tmp_path / name, "matcher")
+        write(tmp_path / name, "matcher", precision=precision)
     assert contents(tmp_path / "a") == contents(tmp_path / "b")
 
 
@@ -92,18 +95,20 @@ def test_a_changed_plan_takes_the_same_weights(tmp_path):
 
 
 def test_figures_and_cautions_travel_along(tmp_path):
-    """With the safety notice before all."""
-    write(tmp_path / "a", "beam+colour", figures={"located_4": 0.9}, cautions=["mind the glass"])
+    """With the verdict, and the safety notice before all."""
+    verdict = {"ship": "learned", "sentence": "Ship it.", "confidence": "sure"}
+    figures, cautions = {"located_4": 0.9}, ["mind the glass"]
+    write(tmp_path / "a", "beam+colour", figures=figures, cautions=cautions, verdict=verdict)
     manifest = json.loads((tmp_path / "a" / MANIFEST).read_text())
-    assert manifest["figures"] == {"located_4": 0.9}
+    assert manifest["figures"] == figures and manifest["verdict"] == verdict
     assert manifest["cautions"] == [SAFETY_NOTICE, "mind the glass"]
 
 
 def test_depth_only_is_said(tmp_path):
     """Where the plan names no finishes."""
     plain = filter_of("beam+colour")
-    site = writer.replace(plain.site, finish=np.full_like(plain.site.finish, -1))
-    write_bundle(tmp_path / "a", plain._replace(site=site), rehearsed()[1], PROVENANCE)
+    site = replace(plain.site, finish=np.full_like(plain.site.finish, -1))
+    write_bundle(tmp_path / "a", plain._replace(site=site), rendered()[1], PROVENANCE)
     assert DEPTH_ONLY in json.loads((tmp_path / "a" / MANIFEST).read_text())["cautions"]
 
 
@@ -111,16 +116,15 @@ def test_a_setting_the_format_forbids_leaves_nothing(tmp_path):
     """A floor of zero would let a strip be impossible on the robot."""
     bad = filter_of("beam")._replace(weighing=Weighing(0.4, 0.4, 0.0))
     with pytest.raises(BundleError, match=r"weighing\.floor"):
-        write_bundle(tmp_path / "a", bad, rehearsed()[1], PROVENANCE)
+        write_bundle(tmp_path / "a", bad, rendered()[1], PROVENANCE)
     assert list(tmp_path.iterdir()) == []
 
 
-def test_rings_are_kept_as_rendered(tmp_path):
-    """Expected range and finish of every live cell, bit for bit."""
-    write(tmp_path / "a")
-    arrays, site = load_file(tmp_path / "a" / SITE), rehearsed()[0]
-    np.testing.assert_array_equal(arrays["range_m"], site.range_m)
-    np.testing.assert_array_equal(arrays["finish"], site.finish)
+@pytest.mark.parametrize(("kind", "expected"), [("beam", False), ("endpoint+colour", True)])
+def test_distances_go_along_only_where_the_model_reads_them(tmp_path, kind, expected):
+    """A field is two bytes for every quarter of a cell, live or not."""
+    write(tmp_path / "a", kind)
+    assert ("field_code" in load_file(tmp_path / "a" / SITE)) == expected
 
 
 def test_a_model_the_robot_cannot_run_is_refused():

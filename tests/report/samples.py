@@ -1,5 +1,7 @@
 """A small invented site, a drive on it and a page about both."""
 
+from typing import NamedTuple
+
 import numpy as np
 
 from learnfilter.plan.floorplan import DOOR, NO_FINISH, OPEN, SHUT, UNKNOWN, WALL, WINDOW, Finish, FloorPlan
@@ -14,8 +16,12 @@ from learnfilter.report import (
     Placement,
     RunPage,
     SiteMap,
+    Story,
     Table,
+    Timeline,
     Track,
+    Trail,
+    TrailMap,
 )
 
 HOSTILE = "<script>alert('x')</script> & \"quoted\" $1"
@@ -68,6 +74,36 @@ def sample_episode(plan: FloorPlan) -> Episode:
     return Episode("drive one", plan, Placement(0.0, 0.0, 0.5), tracks, bearings, depth, reference)
 
 
+class SamplePatch(NamedTuple):
+    """A square that disagrees."""
+
+    kind: str
+    x_m: float
+    y_m: float
+    side_m: float = 0.5
+
+
+def sample_trail(label: str = "matcher", lost: int = 2) -> Trail:
+    """From (0.5, 2) to (3.5, 2), locked at its last pose, lost at its first ones."""
+    poses = np.column_stack([np.linspace(0.5, 3.5, 6), np.full(6, 2.0), np.zeros(6)])
+    return Trail(label, poses, np.linspace(5, 1, 6), np.arange(6) < lost, poses[-1:])
+
+
+def sample_trails(plan: FloorPlan, *labels: str, lost: int = 2) -> TrailMap:
+    """Trails of these names, a reference pose that is not always known, and a patch of each kind."""
+    trails = tuple(sample_trail(label, lost) for label in labels)
+    reference = trails[0].pose.copy()
+    reference[2] = np.nan
+    patches = (SamplePatch("gone", 1.25, 1.25), SamplePatch("new", 3.25, 0.75))
+    return TrailMap(HOSTILE, plan, trails, reference, patches, HOSTILE)
+
+
+def sample_timeline() -> Timeline:
+    """Every state there is, and an alarm."""
+    stretches = ((0, 3, "searching"), (3, 8, "locked"), (8, 10, "locked wrongly"), (10, 12, "lost"))
+    return Timeline(HOSTILE, ((HOSTILE, stretches, (10,)), ("other", ((0, 12, "locked"),), ())), HOSTILE)
+
+
 def sample_page(plan: FloorPlan, episode: Episode) -> RunPage:
     """Every section in use, and a hostile text wherever text may stand."""
     x = np.arange(1, 5)
@@ -80,6 +116,9 @@ def sample_page(plan: FloorPlan, episode: Episode) -> RunPage:
         confidence=HOSTILE,
         job=HOSTILE,
         episodes=(episode, episode),
+        trail_maps=(sample_trails(plan, "matcher", HOSTILE),),
+        timelines=(sample_timeline(),),
+        stories=(Story(HOSTILE, (HOSTILE,)),),
         maps=(SiteMap(HOSTILE, plan, (Note(HOSTILE, (1, 1), "error", HOSTILE),)),),
         tables=(Table(HOSTILE, columns, rows, HOSTILE),),
         forests=(Forest(HOSTILE, ((HOSTILE, Interval(0.1, 0.02, 0.18)),), HOSTILE, HOSTILE, HOSTILE),),

@@ -1,5 +1,6 @@
 """PNG files of plans and drives."""
 
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -8,6 +9,8 @@ from PIL import Image
 
 from learnfilter.core.errors import ShapeError
 from learnfilter.report import Note, draw_plan, draw_replay
+from learnfilter.report.palette import LINE_STYLES, PATCH_LOOKS
+from tests.report.samples import sample_trail, sample_trails
 
 
 def pixels(path: Path) -> np.ndarray:
@@ -47,17 +50,32 @@ def test_a_trail_is_drawn(plan, tmp_path):
 
 def test_a_replay_shows_where_the_robot_was_lost(plan, tmp_path):
     """The mark of lost stretches is there only when there are any."""
-    poses = np.column_stack([np.linspace(0.5, 3.5, 6), np.full(6, 2.0), np.zeros(6)])
-    common = {"entropy_nats": np.linspace(5, 1, 6), "reference": poses, "locked_at": 3}
-    draw_replay(plan, poses, tmp_path / "a.png", **common, lost=np.zeros(6, bool))
-    draw_replay(plan, poses, tmp_path / "b.png", **common, lost=np.arange(6) < 2)
+    draw_replay(sample_trails(plan, "matcher", lost=0), tmp_path / "a.png")
+    draw_replay(sample_trails(plan, "matcher", lost=2), tmp_path / "b.png")
     colour = np.array([0xC6, 0x53, 0x00]) / 255
     marks = [has_colour(tmp_path / name, colour) for name in ("a.png", "b.png")]
     assert marks == [False, True]
 
 
-def test_a_replay_of_unequal_lengths_is_refused_and_leaves_no_file(plan, tmp_path):
+def test_several_trails_have_a_colour_each(plan, tmp_path):
+    """Those of the line styles; a single trail is coloured by its entropy instead."""
+    draw_replay(sample_trails(plan, "one"), tmp_path / "a.png")
+    draw_replay(sample_trails(plan, "one", "two"), tmp_path / "b.png")
+    second = [int(LINE_STYLES[1].colour[i : i + 2], 16) / 255 for i in (1, 3, 5)]
+    assert [has_colour(tmp_path / name, second) for name in ("a.png", "b.png")] == [False, True]
+
+
+def test_patches_that_disagree_are_drawn(plan, tmp_path):
+    """The outline of what is gone is there only with a patch of that kind."""
+    drawn = sample_trails(plan, "matcher")
+    draw_replay(replace(drawn, patches=drawn.patches[1:]), tmp_path / "a.png")
+    draw_replay(drawn, tmp_path / "b.png")
+    gone = [int(PATCH_LOOKS["gone"].colour[i : i + 2], 16) / 255 for i in (1, 3, 5)]
+    assert [has_colour(tmp_path / name, gone) for name in ("a.png", "b.png")] == [False, True]
+
+
+def test_a_trail_of_unequal_lengths_is_refused():
     """Five entropies do not fit six poses."""
+    trail = sample_trail()
     with pytest.raises(ShapeError, match="entropy_nats"):
-        draw_replay(plan, np.zeros((6, 3)), tmp_path / "a.png", entropy_nats=np.zeros(5))
-    assert list(tmp_path.iterdir()) == []
+        replace(trail, entropy_nats=np.zeros(5))

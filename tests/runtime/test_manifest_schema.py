@@ -39,6 +39,13 @@ def test_every_kind_of_manifest_obeys_the_schema(shipped, kind):
     jsonschema.validate(json.loads((shipped(kind) / MANIFEST).read_text()), SCHEMA)
 
 
+def test_a_bundle_that_watches_nothing_obeys_too(shipped):
+    """Where there were no drives to measure what is usual."""
+    manifest = json.loads((shipped("beam") / MANIFEST).read_text()) | {"watch": None}
+    jsonschema.validate(manifest, SCHEMA)
+    hold(manifest, SCHEMA, Path("manifest.json"))
+
+
 @settings(deadline=None, max_examples=150, suppress_health_check=[HealthCheck.function_scoped_fixture])
 @given(data=st.data())
 def test_our_reader_refuses_what_the_library_refuses(shipped, data):

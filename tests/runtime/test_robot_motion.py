@@ -9,6 +9,7 @@ from learnfilter.filtering.kernels import clear_paths
 from learnfilter.filtering.motion import MotionModel
 from learnfilter.filtering.motion import predict as torch_predict
 from learnfilter.runtime.motion import MotionNoise, clear_path, predict, shift_weights
+from learnfilter.runtime.part import Part
 from tests.shipping import rehearsed
 
 MOTIONS = {
@@ -31,6 +32,13 @@ def belief() -> np.ndarray:
     return (belief / belief.sum()).astype(np.float32)
 
 
+def whole(part: Part) -> np.ndarray:
+    """The belief on the whole lattice."""
+    belief = np.zeros(rehearsed()[0].grid.shape, np.float32)
+    belief[(slice(None), *part.window)] = part.planes
+    return belief
+
+
 @pytest.mark.parametrize("motion", MOTIONS.values(), ids=MOTIONS)
 def test_prediction_is_torchs(belief, motion):
     """Every mass arrives where the trained filter would have put it."""
@@ -40,9 +48,22 @@ def test_prediction_is_torchs(belief, motion):
             torch.from_numpy(belief)[None], torch.tensor([motion]), lattice_of(site), model
         )
     noise = MotionNoise(**model.settings()._asdict())
-    found = predict(belief, np.array(motion, np.float32), site.grid, site.live, noise)
+    found = whole(predict(Part(belief, 0, 0), np.array(motion, np.float32), site.grid, site.live, noise))
     # float32 shifts of 0.25 m cells are off by 1e-6 of a cell, and so is the mass that crosses an edge
     assert np.abs(found - expected[0].numpy()).sum() / 2 < 1e-5
+
+
+@pytest.mark.parametrize("motion", MOTIONS.values(), ids=MOTIONS)
+def test_a_window_moves_like_the_whole(belief, motion):
+    """Outside of it the belief is zero, so leaving that out changes nothing."""
+    site, noise = rehearsed()[0], MotionNoise(0.05, 0.02, 0.05, 0.01)
+    here = np.zeros(site.live.shape, bool)
+    here[8:20, 5:16] = True
+    some, odometry = Part(belief * here, 0, 0), np.array(motion, np.float32)
+    found, expected = (
+        whole(predict(part, odometry, site.grid, site.live, noise)) for part in (some.cropped(here), some)
+    )
+    np.testing.assert_allclose(found, expected, atol=1e-7)  # float32 sums in another order
 
 
 def test_a_belief_that_drove_into_the_wall_starts_anew(belief):
@@ -51,14 +72,14 @@ def test_a_belief_that_drove_into_the_wall_starts_anew(belief):
     lone = np.zeros_like(belief)
     lone[0, site.cells[0, 0], site.cells[0, 1]] = 1.0
     out = predict(
-        lone,
+        Part(lone, 0, 0),
         np.array([-9.0, 0.0, 0.0], np.float32),
         site.grid,
         site.live,
         MotionNoise(0.05, 0.02, 0.01, 0.01),
     )
     expected = site.live / (site.live.sum() * site.grid.headings)
-    np.testing.assert_allclose(out, np.broadcast_to(expected, out.shape), rtol=1e-5)  # float32
+    np.testing.assert_allclose(whole(out), np.broadcast_to(expected, lone.shape), rtol=1e-5)  # float32
 
 
 @pytest.mark.parametrize("shift", [(0.0, 0.0), (3.0, 0.0), (-2.4, 5.1), (0.4, -1.5), (40.0, -3.0)])
@@ -73,6 +94,6 @@ def test_the_way_is_clear_where_the_trained_filter_finds_it_clear(shift):
 def test_taps_move_mass_by_the_mean(variance):
     """Weights sum to one and their mean is the shift, whatever the noise."""
     mean, offsets = np.array([0.37]), np.arange(-12.0, 13.0)[None]
-    weights = shift_weights(mean, np.array([variance]), offsets)
+    weights = shift_weights(mean, np.array([variance]), offsets[:, 0], offsets.size)
     # float64 second differences
     assert (weights.sum(), (weights * offsets).sum()) == pytest.approx((1.0, 0.37), abs=1e-12)

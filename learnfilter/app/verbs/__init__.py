@@ -18,6 +18,7 @@ from learnfilter.app.verb_settings import (
     ReplayConfig,
     SurveyConfig,
     TrainConfig,
+    VerifyConfig,
 )
 
 VERBS: dict[str, type[Common]] = {
@@ -28,6 +29,7 @@ VERBS: dict[str, type[Common]] = {
     "train": TrainConfig,
     "ablate": AblateConfig,
     "export": ExportConfig,
+    "verify": VerifyConfig,
     "replay": ReplayConfig,
     "demo": DemoConfig,
 }

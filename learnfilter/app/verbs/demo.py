@@ -36,7 +36,8 @@ from learnfilter.app.pages import (
     training_charts,
     trust_table,
 )
-from learnfilter.app.replaying import draw, replay_bundle
+from learnfilter.app.replay_page import stories, timeline, trail_map
+from learnfilter.app.replaying import Replayed, replay_bundle
 from learnfilter.app.runs import RunFolder, open_run
 from learnfilter.app.studying import Subject, study_subject
 from learnfilter.app.training import train_models
@@ -44,7 +45,7 @@ from learnfilter.app.verb_settings import DemoConfig, TrainConfig
 from learnfilter.drives.tables import iter_rows, write_drive
 from learnfilter.export.check import compare
 from learnfilter.plan import FloorPlan, check_plan, write_plan
-from learnfilter.report import Column, RunPage, SiteMap, Table, draw_plan, write_page
+from learnfilter.report import Column, RunPage, SiteMap, Table, TrailMap, draw_plan, draw_replay, write_page
 from learnfilter.runtime import load_bundle
 
 
@@ -82,7 +83,7 @@ def run(settings: DemoConfig) -> dict[str, Any]:
         "parameters": models[LEARNED].facts["parameters"],
         "training_seconds": trained_s,
         "bundle": {**bundle, "folder": "bundle"},
-        "replay": replayed,
+        "replay": replayed.summary(),
     }
     summary = folder.finish(results)
     print("\n".join(table_lines(found)))
@@ -98,7 +99,7 @@ def _training_part(settings: DemoConfig) -> TrainConfig:
     return TrainConfig(**{**fields, "site": replace(settings.site, **of_file)})
 
 
-def _replay(folder: RunFolder, place: Place) -> dict[str, Any]:
+def _replay(folder: RunFolder, place: Place) -> Replayed:
     """Write the first drive as a table and run the bundle over it, as the robot would."""
     plan, drive = place.plan, place.drives[0]
     write_plan(plan, folder.path / "site.geojson")
@@ -107,8 +108,12 @@ def _replay(folder: RunFolder, place: Place) -> dict[str, Any]:
     write_drive(drive, table)
     loaded = load_bundle(folder.path / "bundle")
     replayed = replay_bundle(loaded, iter_rows(table, loaded.strip), folder.path / "estimates.parquet")
-    draw(replayed, plan, folder.path / "replay.png", f"{drive.name}: the bundle over a recorded drive")
-    return replayed.summary()
+    draw_replay(_trail_map(replayed, plan), folder.path / "replay.png")
+    return replayed
+
+
+def _trail_map(replayed: Replayed, plan: FloorPlan) -> TrailMap:
+    return trail_map({"bundle": replayed}, plan, f"{plan.name}: the bundle over a recorded drive")
 
 
 def _page(
@@ -119,11 +124,11 @@ def _page(
     subject: Subject,
     plan: FloorPlan,
     bundle: dict[str, Any],
-    replayed: dict[str, Any],
+    replayed: Replayed,
 ) -> RunPage:
     shown = [models[found.analytic], models[LEARNED]]
     episodes = watch_first(shown, subject, 3) if subject.count > 1 else watch_first(shown, subject, 1, 2)
-    at = replayed["locked_at_row"]
+    at = replayed.summary()["locked_at_row"]
     handed = Table(
         "What goes to the robot",
         (Column("bundle"), Column("value", ",d")),
@@ -132,8 +137,9 @@ def _page(
             ("bytes of weights", bundle["weights_bytes"]),
             ("live cells", bundle["cells"]),
             ("poses", bundle["poses"]),
-            ("strips of the replayed drive", replayed["rows"]),
-            ("strip at which it locked", None if at is None else at + 1),
+            ("strips of the replayed drive", len(replayed.rows)),
+            ("row at which it locked", at),
+            ("times it was lost", replayed.lost),
         ),
         f"The NumPy runtime reproduces its vectors to a total variation of {bundle['runtime_tv']:.1e}.",
     )
@@ -144,6 +150,9 @@ def _page(
         confidence=found.verdict.confidence,
         job=f"Train in invented sites, then judge on {subject.title}.",
         episodes=episodes,
+        trail_maps=(_trail_map(replayed, plan),),
+        timelines=(timeline({"bundle": replayed}),),
+        stories=stories({"bundle": replayed}),
         maps=(SiteMap(f"Plan of {plan.name}", plan, check_plan(plan)),),
         tables=(*score_tables(found), *condition_table(found), trust_table(found)),
         forests=forests(found),

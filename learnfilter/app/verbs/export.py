@@ -1,9 +1,11 @@
 """Make the folder that goes to the robot: weights, your site, and numbers to check them by.
 
-The bundle holds manifest.json, weights.safetensors, site.safetensors and vectors.npz (inputs and expected
-outputs of whole filter steps). The robot reads it with NumPy and safetensors alone: see
-`learnfilter.runtime`. Any model of a training run can go, the analytic ones too. When the plan changes,
-export again; nothing is trained anew.
+The bundle holds manifest.json, weights.safetensors, site.safetensors, vectors.npz (inputs and expected
+outputs of whole filter steps), and model and step once more as observe.onnx and step.onnx. The robot reads
+it with NumPy and safetensors alone: see `learnfilter.runtime`. Any model of a training run can go, the
+analytic ones too; precision=fp16 or int8 makes weights and rings smaller and less exact. How surprising a
+strip usually is on this site is measured on simulated drives, or on recorded ones on which the plan was
+true: drives=[a.parquet,b.parquet]. When the plan changes, export again; nothing is trained anew.
 
 Example:
   learnfilter export model=runs/train/cart site.file=toy_worlds/lindqvist_office.geojson
@@ -16,8 +18,8 @@ from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
-from learnfilter.app.build import build_plan
-from learnfilter.app.exporting import export_bundle
+from learnfilter.app.build import build_plan, build_strip
+from learnfilter.app.exporting import export_bundle, recorded
 from learnfilter.app.models import chosen, settings_of
 from learnfilter.app.runs import open_run
 from learnfilter.app.verb_settings import ExportConfig
@@ -34,7 +36,8 @@ def run(settings: ExportConfig) -> dict[str, Any]:
     figures = _figures(settings.ablation)
     folder = open_run("export", settings.name or Path(settings.site.file or "").stem, settings, replace=True)
     out = Path(settings.out) if settings.out else folder.path / "bundle"
-    sizes = export_bundle(made_with, model, plan, out, figures)
+    usual = recorded(settings.drives, build_strip(made_with.strip))
+    sizes = export_bundle(made_with, model, plan, out, figures, precision=settings.precision, usual=usual)
     sizes["runtime_tv"] = compare(out)
     size = f"{sizes['bytes'] / 1e6:.1f} MB, {sizes['weights']:,} weights, {sizes['poses']:,} poses"
     print(f"written: {out} ({size})")

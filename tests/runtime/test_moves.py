@@ -7,7 +7,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from learnfilter.core.errors import ConfigError, ShapeError
-from learnfilter.movers.contract import Footprint, Motion, clear_motions, free_range
+from learnfilter.runtime.moves import MOTIONS, Footprint, Motion, check_motions, clear_motions, free_range
 
 CAMERA = np.radians(np.linspace(-43.6, 43.6, 32))
 SCANNER = np.radians(np.arange(-90.0, 91.0, 2.0))
@@ -95,3 +95,29 @@ def test_lengths_must_agree():
     """A depth for every bearing."""
     with pytest.raises(ShapeError):
         clear(np.ones(5), SCANNER)
+
+
+def test_motions_are_judged_one_by_one():
+    """A wall 0.6 m ahead stops half a metre and not a quarter; order and turns between do not matter."""
+    depth = 0.6 / np.cos(SCANNER).clip(1e-3)
+    motions = [Motion(0, 0, 1.0), Motion(0.5, 0, 0), Motion(0, 0, -1.0), Motion(0.25, 0, 0)]
+    np.testing.assert_array_equal(
+        clear_motions(motions, depth, SCANNER, Footprint()), [True, False, True, True]
+    )
+
+
+def test_an_infinite_reading_shows_nothing():
+    """Some drivers say infinity where nothing came back."""
+    assert not clear(np.full(91, np.inf), SCANNER)
+
+
+def test_the_usual_motions_turn_as_much_to_the_left_as_to_the_right():
+    """Else a robot that draws them evenly would circle."""
+    np.testing.assert_allclose(sum(motion.turn_rad for motion in MOTIONS), 0.0, atol=1e-12)
+
+
+@pytest.mark.parametrize("side", [1.0, -1.0])
+def test_motions_without_a_way_to_turn_are_refused(side):
+    """Blocked, it could do nothing, or turn one way only."""
+    with pytest.raises(ConfigError, match=r"mover\.moves"):
+        check_motions([Motion(0.5, 0, side), Motion(0, 0, side)])

@@ -1,0 +1,5 @@
+"""Bundles for movers that decide from a robot's filter."""
+
+from tests.shipping import shipped
+
+__all__ = ["shipped"]
