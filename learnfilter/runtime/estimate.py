@@ -24,7 +24,7 @@ class Estimate(NamedTuple):
         entropy: of the belief, nats.
         modes: separate modes, heaviest first, carried like the pose, which is the first one's.
         state: 'locked' after three weighed strips running with 0.9 of the mass near the best mode;
-            'lost' from an alarm, or from when a locked pose is given up, until the next lock; else 'searching'.
+            'lost' from an alarm, or when a locked pose is given up, until the next lock; else 'searching'.
         weighed: whether this step's strip was weighed.
         log_evidence: nats of the last weighed strip given those before, up to the model's constant.
         surprise: p-value of the last weighed strip where the plan is true, small where it surprises; NaN

@@ -128,7 +128,7 @@ def _taps(mean: NDArray[np.floating], variance: NDArray[np.floating]) -> tuple[N
 def shift_weights(
     mean: NDArray[np.floating], variance: NDArray[np.floating], first: NDArray[np.floating], taps: int
 ) -> NDArray[np.float64]:
-    """Weights [i k] of `taps` offsets from `first` [i], for shifts of mean [i] cells, variance [i] cells^2."""
+    """Weights [i k] of `taps` offsets from `first` [i], for shifts of mean and variance [i] in cells."""
     rest = variance - _interpolation_variance(mean, np.maximum(variance - 1 / 6, 0.0))
     spread = np.sqrt(SOFTNESS * np.logaddexp(0.0, rest / SOFTNESS) + LEAST_VARIANCE)[:, None]
     x = (first - mean)[:, None] + np.arange(-1, taps + 1)

@@ -20,7 +20,6 @@ from numpy.typing import NDArray
 
 from learnfilter.app.exporting import export_bundle
 from learnfilter.core.colour import linear_to_srgb
-from learnfilter.core.memory import give_back_memory
 from learnfilter.core.seeds import stream
 from learnfilter.plan.floorplan import SHUT, Finish, FloorPlan
 from learnfilter.runtime import Bundle, Estimate, Localizer, load_bundle
@@ -39,11 +38,10 @@ SHORT_RUN, LONG_RUN, WEIGHED_EVERY = 10_000, 1_000_000, 10
 def speed() -> dict[str, Any]:
     """A step that weighs every pose, beside a pass over the table; and a step of a robot that is locked."""
     with tempfile.TemporaryDirectory() as scratch:
-        whole = _large(Path(scratch), POSES / 32 * 0.0625, "fp32")
+        whole = _large(Path(scratch), 1_000, "fp32")
         weight = sum(file.stat().st_size for file in whole.folder.iterdir())
         area_m2 = len(whole.site.cells) * whole.site.grid.cell_m**2
-        bundle = _cut(whole, POSES)
-        localizer = Localizer(bundle)
+        localizer = Localizer(_cut(side_by_side(whole, 2), POSES))
         lost, locked = _Lost(localizer), _Locked(localizer)
         times = _in_turn({"pass": _table_pass(localizer), "lost": lost, "locked": locked})
     full, locked_s, table = (np.array(times[name]) for name in ("lost", "locked", "pass"))
@@ -61,15 +59,15 @@ def speed() -> dict[str, Any]:
 def area() -> dict[str, Any]:
     """Step times and memory of int8 bundles of growing sites, each in a process that does nothing else."""
     rows = []
-    for square_metres in AREAS_M2:
-        say(f"area: {square_metres} m2")
-        with tempfile.TemporaryDirectory() as scratch:
-            _large(Path(scratch), square_metres, "int8")
-            words = [sys.executable, __file__, str(Path(scratch) / "bundle")]
+    with tempfile.TemporaryDirectory() as scratch:
+        least = _large(Path(scratch), AREAS_M2[0], "int8")
+        for square_metres in AREAS_M2:
+            say(f"area: {square_metres} m2")
+            words = [sys.executable, __file__, str(least.folder), str(square_metres // AREAS_M2[0])]
             rows.append(json.loads(subprocess.run(words, check=True, stdout=subprocess.PIPE).stdout))
-            give_back_memory()
     for row in rows:
         row["full_vs_500_m2"] = row["full_step_ms"] / rows[0]["full_step_ms"]
+        row["locked_vs_500_m2"] = row["locked_step_ms"] / rows[0]["locked_step_ms"]
     return {"area_growth": rows}
 
 
@@ -96,7 +94,7 @@ def memory() -> dict[str, Any]:
 
 
 def _large(scratch: Path, square_metres: float, precision: str) -> Bundle:
-    """A bundle of a warehouse with at least so many square metres of live cells; in the folder `bundle`."""
+    """A bundle of a warehouse with at least so many square metres of live cells."""
     settings, model = matcher(0)
     plan = warehouse(square_metres * 1.25)
     export_bundle(settings, model, plan, scratch / "bundle", precision=precision, usual=())
@@ -120,6 +118,18 @@ def warehouse(square_metres: float) -> FloorPlan:
     return FloorPlan(
         segments, blank, blank + np.int8(SHUT), finish, blank.astype(np.int32), finishes, name="warehouse"
     )
+
+
+def side_by_side(bundle: Bundle, copies: int) -> Bundle:
+    """The bundle with its site so many times over, one above the other: as many cells as in a larger one."""
+    site, grid = bundle.site, bundle.site.grid
+    up = np.repeat(np.arange(copies) * grid.rows, len(site.cells))
+    cells = np.tile(site.cells, (copies, 1)) + np.stack([up, np.zeros_like(up)], axis=1)
+    rings: dict[str, Any] = {
+        name: np.tile(getattr(site, name), (copies, 1)) for name in ("range_m", "unsure", "finish")
+    }
+    taller = replace(grid, rows=grid.rows * copies)
+    return replace(bundle, site=replace(site, grid=taller, cells=cells, **rings))
 
 
 def _cut(bundle: Bundle, poses: int) -> Bundle:
@@ -213,10 +223,10 @@ def _resident_bytes() -> int:
     return pages * resource.getpagesize()
 
 
-def _alone(folder: str) -> dict[str, Any]:
-    """What a bundle costs the process it is loaded in."""
+def _alone(folder: str, copies: int) -> dict[str, Any]:
+    """What a bundle costs the process it is loaded in, its site so many times over."""
     clock = time.perf_counter()
-    bundle = load_bundle(folder)
+    bundle = side_by_side(load_bundle(folder), copies)
     localizer = Localizer(bundle)
     lost = _Lost(localizer)
     lost.ready()
@@ -234,4 +244,4 @@ def _alone(folder: str) -> dict[str, Any]:
 
 
 if __name__ == "__main__":
-    print(json.dumps(_alone(sys.argv[1])))
+    print(json.dumps(_alone(sys.argv[1], int(sys.argv[2]))))

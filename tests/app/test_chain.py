@@ -312,7 +312,7 @@ def test_figures_of_an_ablation_go_along(demo, elsewhere):
         == 0
     )
     manifest = json.loads(next(Path("runs/export").glob("*/bundle/manifest.json")).read_text())
-    assert manifest["figures"]["verdict"] == summary_of(demo)["results"]["verdict"]
+    assert manifest["verdict"] == summary_of(demo)["results"]["verdict"]
 
 
 def test_a_drive_is_replayed_strip_by_strip(office, elsewhere):
@@ -420,8 +420,12 @@ def test_a_mistake_costs_one_line_and_leaves_nothing(words, named, demo, office,
 @pytest.mark.parametrize("verb", VERBS)
 def test_a_negative_seed_is_refused_by_every_verb(verb, elsewhere, capsys):
     """Before anything is read."""
-    given = {"replay": ["bundle=some", "drive=some.csv"], "label": ["drive=some.csv"]}.get(verb, [])
-    assert run_command([verb, ON_OFFICE, *given, "seed=-1"]) == 2
+    needed = {
+        "replay": [ON_OFFICE, "bundle=some", "drive=some.csv"],
+        "label": [ON_OFFICE, "drive=some.csv"],
+        "verify": ["bundle=some"],
+    }
+    assert run_command([verb, *needed.get(verb, [ON_OFFICE]), "seed=-1"]) == 2
     assert "seed" in capsys.readouterr().err
 
 
