@@ -4,4 +4,4 @@ Nothing is imported here: `learnfilter.runtime` must load on a robot that has Nu
 safetensors alone.
 """
 
-__version__ = "0.2.0"
+__version__ = "0.3.0"

@@ -32,7 +32,7 @@ def bayes(
     active = predicted.sum(axis=0) >= weighing.skip_below / count
     active = live & binary_dilation(active, np.ones((3, 3)))  # and the eight cells beside each
     skipped = 1 - prior[:, active].sum()
-    if (active != live).any():
+    if 0 < 2 * active.sum() <= count:
         belief, log_evidence = conditioned(active)
         if log_evidence >= np.log(skipped * weighing.skip_ratio):
             return belief, log_evidence, True

@@ -73,7 +73,8 @@ def weigh(
         prior, log_likelihood, lattice.graph.filled(True, BOOL, lattice.count), lattice
     )
     skipped = (1.0 - (prior.cast(F64) * spoken.cast(F64)).sum()).at_least(1e-30)
-    enough = ~anew & (log_some >= (skipped * weighing.skip_ratio).log())
+    few = lattice.count.cast(F64) >= spoken.cast(F64).sum() * 2.0
+    enough = ~anew & few & (log_some >= (skipped * weighing.skip_ratio).log())
     belief = lattice.on_planes(enough.where(some, every))
     return belief, enough.where(log_some, log_every).cast(F32)
 

@@ -119,12 +119,12 @@ def weigh_active(
     """
     cells = belief[0].sum(0).flatten()[lattice.cells]
     active = cells >= weighing.skip_below / len(cells)
-    if not 0 < int(active.sum()) < len(cells):
-        return _weigh_all(belief, scores, lattice, weighing.floor)
     mask = torch.zeros_like(lattice.live)
     mask.view(-1)[lattice.cells[active]] = True
     mask = (F.max_pool2d(mask[None].float(), 3, 1, 1)[0] > 0) & lattice.live
     active = mask.view(-1)[lattice.cells]
+    if not 0 < 2 * int(active.sum()) <= len(cells):
+        return _weigh_all(belief, scores, lattice, weighing.floor)
     some = lattice._replace(live=mask, cells=lattice.cells[active])
     prior = belief * (1 - weighing.floor) + weighing.floor / (len(cells) * belief.shape[1])
     prior = prior * mask

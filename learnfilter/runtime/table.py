@@ -69,12 +69,13 @@ class RingTable:
         spectrum = np.fft.rfft(asked, axis=0).astype(np.complex64)
         real = spectrum.view(np.float32) * self._scale
         imaginary = (1j * spectrum).view(np.float32) * self._scale
-        values = self._values[:, cells] if not isinstance(cells, slice) else self._values
-        product = np.empty((len(values), 2, values.shape[1]), np.float32)
-        for rows, a, b, out in zip(values, real, imaginary, product, strict=True):
-            for begin in range(0, len(rows), STRETCH):
+        count = self._values.shape[1] if isinstance(cells, slice) else len(cells)
+        product = np.empty((len(self._values), 2, count), np.float32)
+        for rows, a, b, out in zip(self._values, real, imaginary, product, strict=True):
+            for begin in range(0, count, STRETCH):
                 part = slice(begin, begin + STRETCH)
-                stretch = rows[part].astype(np.float32, copy=False)
+                chosen = rows[part] if isinstance(cells, slice) else rows[cells[part]]
+                stretch = chosen.astype(np.float32, copy=False)
                 np.matmul(stretch, a, out=out[0, part])
                 np.matmul(stretch, b, out=out[1, part])
         return self._back @ product.reshape(len(self._back.T), -1)

@@ -56,9 +56,10 @@ class Scale:
         """Belief conditioned on a strip, and its log evidence in nats.
 
         A cell is active if it or one of the eight beside it holds `skip_below` / cells of the prior: the mean
-        over a cell needs those beside it.  The others are left out, and believed in no more, if the strip's
-        evidence over the active ones is `skip_ratio` times the prior that is left out: evidence is relative
-        to a strip seen anywhere, so what is left out would hardly gain.  Otherwise every cell is weighed.
+        over a cell needs those beside it.  Where at most half are, the others are left out, and believed in no
+        more, if the strip's evidence over the active ones is `skip_ratio` times the prior that is left out:
+        evidence is relative to a strip seen anywhere, so what is left out would hardly gain.  Otherwise every
+        cell is weighed.
 
         Args:
             prior: probabilities of live poses, summing to one.
@@ -73,10 +74,9 @@ class Scale:
         share = weighing.floor if floor is None else floor
         if floor is None:
             least = weighing.skip_below / len(self.bundle.site.cells)
-            count = np.count_nonzero(self.live[prior.window] & (prior.planes.sum(axis=0) >= least))
-            if 0 < count < len(self.bundle.site.cells):
-                room = prior.grown(1, 1, self.bundle.site.grid)
-                active = self.live[room.window] & (beside(room.planes.sum(axis=0) >= least) > 0)
+            room = prior.grown(1, 1, self.bundle.site.grid)
+            active = self.live[room.window] & (beside(room.planes.sum(axis=0) >= least) > 0)
+            if 0 < 2 * np.count_nonzero(active) <= len(self.bundle.site.cells):
                 near = room.cropped(active)
                 weights, log_evidence, held = self._weights(
                     near, depth_m, rgb, share, active[_inside(room, near)]
