@@ -13,7 +13,7 @@ from learnfilter.core.lock import Lock
 from learnfilter.core.poses import compose
 
 State = Literal["searching", "locked", "lost"]
-BELIEVED = 0.2  # a locked pose with less of the belief near it has been given up; one strip may halve it
+BELIEVED = 0.05  # a locked pose with less of the belief near it has been given up; one strip may take most
 
 
 class Standing(NamedTuple):

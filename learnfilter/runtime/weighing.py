@@ -56,10 +56,10 @@ class Scale:
         """Belief conditioned on a strip, and its log evidence in nats.
 
         A cell is active if it or one of the eight beside it holds `skip_below` / cells of the prior: the mean
-        over a cell needs those beside it.  Where at most half are, the others are left out, and believed in no
-        more, if the strip's evidence over the active ones is `skip_ratio` times the prior that is left out:
-        evidence is relative to a strip seen anywhere, so what is left out would hardly gain.  Otherwise every
-        cell is weighed.
+        over a cell needs those beside it.  Where at most half are, the others are left out, and believed
+        in no more, if the strip's evidence over the active ones is `skip_ratio` times the prior left out:
+        evidence is relative to a strip seen anywhere, so what is left out would hardly gain.  Otherwise
+        every cell is weighed.
 
         Args:
             prior: probabilities of live poses, summing to one.
