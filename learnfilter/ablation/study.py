@@ -167,7 +167,8 @@ def _row(seen: Trace, course: Course, arena: Arena, marks: Marks) -> Row:
     """What one drive came to."""
     count = len(seen.estimate)
     poses = course.poses[:count]
-    right, credited = located(seen.estimate, poses), _credited(seen.estimate, poses, arena, marks)
+    right = located(seen.estimate, poses)
+    alike = credited(seen.estimate, poses, arena.fold, arena.middle, marks.within_m, marks.within_rad)
     metres = travelled(course.steps.odometry.numpy())
     lock = first_lock(seen.mass)
     row: Row = {
@@ -182,22 +183,30 @@ def _row(seen: Trace, course: Course, arena: Arena, marks: Marks) -> Row:
     }
     for mark in marks.strips:
         if mark <= count:
-            row[f"located_{mark}"] = float(credited[mark - 1])
+            row[f"located_{mark}"] = float(alike[mark - 1])
             row[f"nll_{mark}"] = float(-seen.log_truth[mark - 1])
     return row
 
 
-def _credited(estimate: np.ndarray, poses: np.ndarray, arena: Arena, marks: Marks) -> np.ndarray:
-    """[s] whether each estimate is near the reference, or where a symmetric plan turns it to.
+def credited(
+    estimate: np.ndarray,
+    reference: np.ndarray,
+    fold: int,
+    middle: tuple[float, float],
+    within_m: float,
+    within_rad: float,
+) -> np.ndarray:
+    """[s] whether each estimate [s 3] is near the reference [s 3], or where a symmetric plan turns it to.
 
     That is for the located share alone.  Confidence and locks are held to the one true pose: a filter
-    that is sure of one of two poses that nothing can tell apart is too sure.
+    that is sure of one of two poses that nothing can tell apart is too sure.  `fold` and `middle` are those
+    of an Arena, the others those of Marks.
     """
     near = np.zeros(len(estimate))
-    arm = poses - [*arena.middle, 0.0]
-    for turn in 2 * np.pi * np.arange(arena.fold) / arena.fold:
-        place = compose(np.array([*arena.middle, turn]), arm)
-        near = np.maximum(near, located(estimate, place, marks.within_m, marks.within_rad))
+    arm = reference - [*middle, 0.0]
+    for turn in 2 * np.pi * np.arange(fold) / fold:
+        place = compose(np.array([*middle, turn]), arm)
+        near = np.maximum(near, located(estimate, place, within_m, within_rad))
     return near
 
 

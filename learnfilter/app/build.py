@@ -6,7 +6,8 @@ import math
 from dataclasses import asdict
 from typing import Any
 
-from learnfilter.app.config import MoverConfig, SiteConfig, StripConfig, hold
+from learnfilter.app.config import SiteConfig, StripConfig, hold
+from learnfilter.app.mover_config import MoverConfig, PracticeConfig
 from learnfilter.core.errors import ConfigError
 from learnfilter.core.strip import Strip, even_strip
 from learnfilter.plan import FloorPlan, read_plan
@@ -64,14 +65,18 @@ def build_plan(settings: SiteConfig) -> FloorPlan:
     return read_plan(settings.file, **{key: value for key, value in options.items() if value is not None})
 
 
-def check_invented(settings: SiteConfig) -> None:
+def check_invented(settings: SiteConfig | PracticeConfig, place: str = "site") -> None:
     """Refuse sites that nobody can invent, before a run folder is made for them.
+
+    Args:
+        settings: of the sites.
+        place: whose settings they are.
 
     Raises:
         ConfigError: no families, unknown ones, or a size out of range.
     """
     known = bool(settings.families) and set(settings.families) <= FAMILIES.keys()
-    hold("site.families", known, f"some of {', '.join(FAMILIES)}", settings.families)
+    hold(f"{place}.families", known, f"some of {', '.join(FAMILIES)}", settings.families)
     low, high = SIZES_M
-    for key, size in (("site.width_m", settings.width_m), ("site.depth_m", settings.depth_m)):
-        hold(key, low <= size <= high, f"{low:g} to {high:g} metres", size)
+    for key, size in (("width_m", settings.width_m), ("depth_m", settings.depth_m)):
+        hold(f"{place}.{key}", low <= size <= high, f"{low:g} to {high:g} metres", size)

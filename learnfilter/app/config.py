@@ -135,29 +135,6 @@ class MotionConfig:
         hold("motion.floor", self.floor < 1, "a probability below 1", self.floor)
 
 
-@dataclass
-class MoveConfig:
-    """One short motion: straight ahead, then turn."""
-
-    distance_m: float
-    turn_deg: float
-
-
-@dataclass
-class MoverConfig:
-    """What movers choose among, what they keep clear of and what motion costs."""
-
-    moves: list[MoveConfig]
-    clearance_m: float
-    skirt_m: float
-    price_nats_per_m: float
-    price_nats_per_rad: float
-
-    def __post_init__(self) -> None:
-        for name in ("price_nats_per_m", "price_nats_per_rad"):
-            hold(f"mover.{name}", getattr(self, name) >= 0, "not below 0", getattr(self, name))
-
-
 # The composing library needs a class that is not frozen; Conditions checks its own ranges.
 ConditionConfig: Any = make_dataclass("ConditionConfig", get_type_hints(Conditions).items())
 

@@ -9,6 +9,7 @@ from typing import Any
 from learnfilter.app.build import build_strip
 from learnfilter.app.grounds import drives_on
 from learnfilter.app.models import Stored
+from learnfilter.app.movers import StoredPolicy
 from learnfilter.app.verb_settings import TrainConfig
 from learnfilter.core.strip import Strip
 from learnfilter.drives.drive import Drive
@@ -24,11 +25,11 @@ VECTOR_ROWS = 90
 USUAL_DRIVES, USUAL_ROWS = 60, 34
 
 
-def filter_for(made_with: TrainConfig, model: Stored, plan: FloorPlan) -> Filter:
-    """A model on a plan, with the sensor and lattice it was trained for."""
+def filter_for(made_with: TrainConfig, model: Stored, plan: FloorPlan, cache: Path | None = None) -> Filter:
+    """A model on a plan, with the sensor and lattice it was trained for; `cache` keeps renderings."""
     lattices = model.lattices
     weighing = Weighing(lattices.after_m, lattices.after_rad, model.facts["floor"])
-    site = lattices.render(plan, Path(made_with.runs) / "cache")
+    site = lattices.render(plan, cache)
     return Filter(model.model, model.motion, site, build_strip(made_with.strip), weighing)
 
 
@@ -41,6 +42,7 @@ def export_bundle(
     cautions: Sequence[str] = (),
     precision: str = "fp32",
     usual: Sequence[Drive] | None = None,
+    policy: StoredPolicy | None = None,
 ) -> dict[str, Any]:
     """Write the bundle; returns its sizes.
 
@@ -53,8 +55,9 @@ def export_bundle(
         cautions: beyond the safety notice.
         precision: of weights and rings, one of `runtime.bundle.PRECISIONS`.
         usual: drives on the site to calibrate the watch by; None for simulated ones.
+        policy: that goes along, if any.
     """
-    chosen = filter_for(made_with, model, plan)
+    chosen = filter_for(made_with, model, plan, Path(made_with.runs) / "cache")
 
     def simulated(drives: int, rows: int, seed: int) -> tuple[Drive, ...]:
         radius_m = made_with.grid.robot_radius_m
@@ -79,6 +82,7 @@ def export_bundle(
         precision=precision,
         verdict=verdict,
         usual=simulated(USUAL_DRIVES, USUAL_ROWS, made_with.seed + 1) if usual is None else usual,
+        mover=None if policy is None else policy.shipped(),
     )
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from pathlib import Path
 from typing import Any, NamedTuple
 
@@ -17,9 +18,10 @@ from learnfilter.filtering.motion import MotionModel
 from learnfilter.observe.contract import ObservationModel
 from learnfilter.observe.describe import describe, rebuild
 from learnfilter.training.checkpoint import load_tensors, save_tensors
+from learnfilter.training.loop import StageResult
 from learnfilter.training.recipe import Trained
 
-LEARNED = "matcher"
+LEARNED, POLICY = "matcher", "policy"  # the latter lies beside the models and is none
 
 
 class Stored(NamedTuple):
@@ -51,22 +53,27 @@ class Stored(NamedTuple):
 def store(folder: Path, name: str, trained: Trained, lattices: Lattices, facts: dict[str, Any]) -> Stored:
     """Write a trained model; returns it as it will be read."""
     described, tensors = describe(trained.model)
-    stages = {
+    whole = {"name": name, "model": described, **stage_facts(trained.stages), **facts}
+    motion = {f"motion.{key}": value for key, value in trained.motion.state_dict().items()}
+    model = {f"model.{key}": value for key, value in tensors.items()}
+    save_tensors(folder / f"{name}.safetensors", model | motion, whole)
+    return Stored(name, trained.model, trained.motion, lattices, whole)
+
+
+def stage_facts(stages: Mapping[str, StageResult]) -> dict[str, Any]:
+    """How training went: `stages` by name, and `validation`, the score of the weights that were kept."""
+    *_, last = stages.values()  # each stage begins with the best weights of the one before
+    told = {
         key: {
             "iterations": s.iterations,
             "best_iteration": s.best_iteration,
             "score": s.best_score,
             "history": s.history,
         }
-        for key, s in trained.stages.items()
+        for key, s in stages.items()
         if s.iterations
     }
-    *_, last = trained.stages.values()  # each stage begins with the best weights of the one before
-    whole = {"name": name, "model": described, "stages": stages, "validation": last.best_score, **facts}
-    motion = {f"motion.{key}": value for key, value in trained.motion.state_dict().items()}
-    model = {f"model.{key}": value for key, value in tensors.items()}
-    save_tensors(folder / f"{name}.safetensors", model | motion, whole)
-    return Stored(name, trained.model, trained.motion, lattices, whole)
+    return {"stages": told, "validation": last.best_score}
 
 
 def stored(run: Path, made_with: TrainConfig) -> dict[str, Stored]:
@@ -82,6 +89,8 @@ def stored(run: Path, made_with: TrainConfig) -> dict[str, Stored]:
     """
     found, folder = {}, run / "models"
     for path in sorted(folder.glob("*.safetensors")):
+        if path.stem == POLICY:
+            continue
         tensors, facts = load_tensors(path)
         own = {k.removeprefix("model."): v for k, v in tensors.items() if k.startswith("model.")}
         motion = MotionModel()

@@ -7,7 +7,6 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 from time import perf_counter
-from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -20,13 +19,16 @@ from learnfilter.export import Filter
 from learnfilter.export.rings import packed
 from learnfilter.export.robot import robot_model
 from learnfilter.movers.contract import Mover, Situation
+from learnfilter.movers.episode import EpisodeRecord
 from learnfilter.movers.least_entropy import LeastEntropy
-from learnfilter.movers.policy import STILL, Decision, Policy, PolicyNet
+from learnfilter.movers.policy import Decision, Policy, PolicyNet
+from learnfilter.movers.wander import Wander
 from learnfilter.plan.floorplan import FloorPlan
 from learnfilter.runtime import Bundle, Localizer
 from learnfilter.runtime.arrays import Arrays
 from learnfilter.runtime.models import build_model
 from learnfilter.runtime.moves import Footprint, Motion, clear_motions
+from learnfilter.runtime.proposing import STILL
 from learnfilter.runtime.site import read_site, reads_field
 from learnfilter.sim.conditions import Conditions
 from learnfilter.sim.driver import free_poses
@@ -37,6 +39,7 @@ from learnfilter.training.policy_gradient import Episode, Episodes
 from learnfilter.training.returns import RewardSettings, step_rewards
 
 IN_MEMORY = Path("in memory")
+Teacher = LeastEntropy | Wander
 
 
 def localizer_of(filter_: Filter) -> Localizer:
@@ -57,45 +60,6 @@ def localizer_of(filter_: Filter) -> Localizer:
         watch=None,
     )
     return Localizer(bundle)
-
-
-class EpisodeRecord(NamedTuple):
-    """What happened from one start, strip by strip [t].
-
-    Attributes:
-        reference: [t 3] true pose of the robot, as it reads on the plan.
-        estimate: [t 3] of the filter.
-        right: whether the estimate is near the reference.
-        state: 'searching', 'locked' or 'lost'.
-        mass: belief near the estimate.
-        entropy: nats of the belief.
-        near_truth: belief near the true pose, after the last weighed strip.
-        motion: [t 3] chosen there; the last one was not made.
-        decision_s: seconds that the choice took.
-        metres, radians: travelled and turned so far, in truth.
-        contacts: motions so far that ended at a wall or a thing.
-        people_touched: motions so far on which the robot came too near to somebody.
-    """
-
-    reference: NDArray[np.float64]
-    estimate: NDArray[np.float64]
-    right: NDArray[np.bool_]
-    state: NDArray[np.str_]
-    mass: NDArray[np.float64]
-    entropy: NDArray[np.float64]
-    near_truth: NDArray[np.float64]
-    motion: NDArray[np.float64]
-    decision_s: NDArray[np.float64]
-    metres: NDArray[np.float64]
-    radians: NDArray[np.float64]
-    contacts: NDArray[np.int64]
-    people_touched: NDArray[np.int64]
-
-    @property
-    def locked_at(self) -> int | None:
-        """The strip at which the robot first trusted its pose; None if it never did."""
-        held = np.flatnonzero(self.state == "locked")
-        return int(held[0]) if len(held) else None
 
 
 def run_episode(
@@ -228,7 +192,7 @@ class Lessons:
     """Moves as one mover says, and keeps what a teacher would have done."""
 
     mover: Mover
-    teacher: LeastEntropy
+    teacher: Teacher
     decisions: list[Decision] = field(default_factory=list)
 
     def next(self, situation: Situation, rng: np.random.Generator) -> Motion:
@@ -279,15 +243,17 @@ def lessons_on(
     venues: Sequence[Venue],
     practice: Practice,
     mover: Callable[[], Mover],
-    teacher: LeastEntropy,
+    teacher: Callable[[], Teacher],
     count: int,
     rng: np.random.Generator,
+    tick: Callable[[int, int, str], None],
 ) -> list[Decision]:
-    """Decisions of a teacher in `count` states that a mover gets into, a new one for each episode."""
+    """Decisions of a teacher in `count` states that a mover gets into, new ones for each episode."""
     decisions: list[Decision] = []
     while len(decisions) < count:
         (own,) = rng.spawn(1)
-        lessons = Lessons(mover(), teacher)
+        lessons = Lessons(mover(), teacher())
         practice.exercise(venues[int(own.integers(len(venues)))], lessons, own)
         decisions += lessons.decisions
+        tick(min(len(decisions), count), count, "lessons")
     return decisions[:count]

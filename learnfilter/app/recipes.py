@@ -45,11 +45,11 @@ class StageConfig:
     patience: int
 
     def __post_init__(self) -> None:
-        hold("train.*.iterations", self.iterations >= 0, "at least 0", self.iterations)
-        hold("train.*.learning_rate", self.learning_rate > 0, "above 0", self.learning_rate)
-        hold("train.*.clip", self.clip > 0, "above 0", self.clip)
+        hold("*.iterations", self.iterations >= 0, "at least 0", self.iterations)
+        hold("*.learning_rate", self.learning_rate > 0, "above 0", self.learning_rate)
+        hold("*.clip", self.clip > 0, "above 0", self.clip)
         for key in ("validate_every", "patience"):
-            hold(f"train.*.{key}", getattr(self, key) >= 1, "at least 1", getattr(self, key))
+            hold(f"*.{key}", getattr(self, key) >= 1, "at least 1", getattr(self, key))
 
 
 @dataclass

@@ -18,7 +18,8 @@ from learnfilter.core.errors import DriveError, StepError
 from learnfilter.core.files import whole_file
 from learnfilter.drives.drive import Drive
 from learnfilter.drives.metrics import located
-from learnfilter.runtime import Bundle, Estimate, Localizer
+from learnfilter.runtime import Bundle, Estimate, Localizer, propose
+from learnfilter.runtime.moves import Motion
 
 SCHEMA = pa.schema(
     [
@@ -34,6 +35,7 @@ SCHEMA = pa.schema(
         ("state", pa.string()),
         ("weighed", pa.bool_()),
         ("alarm", pa.bool_()),
+        ("move", pa.list_(pa.float64(), 3)),  # forward_m, left_m, turn_rad proposed; null without a mover
     ],
     metadata={"learnfilter": '{"schema": 2, "table": "estimates"}'},
 )
@@ -110,7 +112,9 @@ def replay_bundle(bundle: Bundle, batches: Iterable[Drive], table: Path) -> Repl
                 clock = time.perf_counter()
                 estimate = _step(localizer, drive, row, colour, done + row)
                 seconds += (time.perf_counter() - clock) * estimate.weighed
-                estimates.append(_table_row(estimate, float(drive.time_s[row])))
+                estimates.append(
+                    {**_table_row(estimate, float(drive.time_s[row])), "move": _move(localizer, drive, row)}
+                )
                 if done + row > 0:  # the first odometry is of no effect
                     travelled += float(np.hypot(*drive.odometry[row, :2]))
                 kept[row] = _kept_row(estimate, drive, row, travelled)
@@ -144,6 +148,13 @@ def _step(localizer: Localizer, drive: Drive, row: int, colour: bool, number: in
         raise DriveError(
             error.message, file=drive.name, place=place, expected=error.expected, got=error.got
         ) from error
+
+
+def _move(localizer: Localizer, drive: Drive, row: int) -> Motion | None:
+    """Where the bundle's mover would go next, after the motion that was driven; None without a mover."""
+    if localizer.bundle.mover is None:
+        return None
+    return propose(localizer, drive.depth_m[row], Motion(*map(float, drive.odometry[row])))
 
 
 def _table_row(estimate: Estimate, time_s: float) -> dict[str, Any]:

@@ -1,7 +1,8 @@
-"""Go on from a training run: tune its models on recorded drives."""
+"""Go on from a training run: tune its models on recorded drives, or take them along as they are."""
 
 from __future__ import annotations
 
+import shutil
 from dataclasses import replace
 from pathlib import Path
 
@@ -10,20 +11,48 @@ from learnfilter.app.board import Board
 from learnfilter.app.build import build_plan
 from learnfilter.app.grounds import Place
 from learnfilter.app.lattices import Lattices
-from learnfilter.app.models import LEARNED, Stored, settings_of, store, stored
+from learnfilter.app.models import LEARNED, POLICY, Stored, settings_of, store, stored
+from learnfilter.app.movers import stored_policy
 from learnfilter.app.progress import progress
 from learnfilter.app.studying import recorded_place
 from learnfilter.app.training import config_hash, filter_settings, stage_settings
 from learnfilter.app.verb_settings import TrainConfig
+from learnfilter.core.files import whole_file
 from learnfilter.filtering.course import Ground
 from learnfilter.training.recipe import MatchingSettings, Trainer
 
 
 def as_started(settings: TrainConfig, start: Path) -> TrainConfig:
-    """The settings with sensor, lattice, motion and model of the run that is gone on from."""
-    made_with = settings_of(start)
-    kept = {key: getattr(made_with, key) for key in ("strip", "grid", "motion", "observe", "condition")}
-    return replace(settings, **kept)
+    """The settings with sensor, lattice, motion and model of the run that is gone on from.
+
+    Where its models are not tuned but taken along, also with what they were trained on.
+    """
+    made_with, kept = settings_of(start), ["strip", "grid", "motion", "observe", "condition"]
+    if not settings.drives:
+        kept += ["train", "site"]
+    return replace(settings, **{key: getattr(made_with, key) for key in kept})
+
+
+def take_models_along(settings: TrainConfig, folder: Path) -> dict[str, Stored]:
+    """Copy the models of the run that `start` names; returns them."""
+    assert settings.start is not None
+    models = stored(Path(settings.start), settings)
+    for name in models:
+        _take_along(Path(settings.start), name, folder)
+    return models
+
+
+def take_policy_along(settings: TrainConfig, folder: Path) -> None:
+    """Copy the policy of the run that `start` names, where it has one."""
+    assert settings.start is not None
+    if stored_policy(Path(settings.start)) is not None:
+        _take_along(Path(settings.start), POLICY, folder)
+
+
+def _take_along(start: Path, name: str, folder: Path) -> None:
+    file = f"{name}.safetensors"
+    with whole_file(folder / "models" / file) as beside:
+        shutil.copyfile(start / "models" / file, beside)
 
 
 def tuning_place(settings: TrainConfig) -> Place:

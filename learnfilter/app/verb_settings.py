@@ -14,6 +14,7 @@ from learnfilter.app.config import (
     StripConfig,
     hold,
 )
+from learnfilter.app.mover_config import MoverConfig
 from learnfilter.app.recipes import BlocksConfig, ObserveConfig, RecipeConfig, StudyConfig
 from learnfilter.runtime.bundle import PRECISIONS
 
@@ -58,15 +59,18 @@ class TrainConfig(Common):
     condition: ConditionConfig
     observe: ObserveConfig
     train: RecipeConfig
+    mover: MoverConfig
     start: str | None
     drives: list[str]
     blocks: BlocksConfig | None
 
     def __post_init__(self) -> None:
         super().__post_init__()
-        recorded = self.start is not None
-        hold("drives", bool(self.drives) == recorded, "recorded drive tables, with `start` only", self.drives)
-        on_plan = not recorded or self.site.file is not None
+        started, practised = self.start is not None, self.mover.practice is not None
+        hold("drives", started or not self.drives, "none, or `start` with them", self.drives)
+        purpose = bool(self.drives) or practised or not started
+        hold("drives", purpose, "recorded drive tables to tune on, or mover=policy", self.drives)
+        on_plan = not self.drives or self.site.file is not None
         hold("site.file", on_plan, "the plan on which `drives` were recorded", self.site.file)
 
 
@@ -80,9 +84,16 @@ class AblateConfig(Common):
     study: StudyConfig
     drives: list[str]
     blocks: BlocksConfig | None
+    movers: list[str]
+    metres: list[float]
 
     def __post_init__(self) -> None:
         super().__post_init__()
+        steered = bool(self.movers and self.drives)
+        hold("movers", not steered, "none: nobody can steer a recorded drive", self.movers)
+        hold("movers", len(set(self.movers)) == len(self.movers), "different ones", self.movers)
+        good = bool(self.metres) and min(self.metres) > 0
+        hold("metres", good, "budgets above 0", self.metres)
         on_plan = self.site.file is not None or not self.drives
         hold("site.file", on_plan, "the plan on which `drives` were recorded", self.site.file)
         hold("conditions", bool(self.conditions), "at least one", list(self.conditions))

@@ -19,6 +19,7 @@ from learnfilter.core.errors import ConfigError
 from learnfilter.core.notice import SAFETY_NOTICE
 from learnfilter.drives.drive import Drive
 from learnfilter.export.calibrate import calibrate
+from learnfilter.export.mover import ShippedMover
 from learnfilter.export.onnx_files import OBSERVE, STEP, write_onnx
 from learnfilter.export.precision import input_moments, restored, stored
 from learnfilter.export.reference import Filter
@@ -73,6 +74,7 @@ def write_bundle(
     precision: str = "fp32",
     verdict: Mapping[str, str] | None = None,
     usual: Sequence[Drive] = (),
+    mover: ShippedMover | None = None,
 ) -> dict[str, Any]:
     """Write a bundle for one site.  A changed plan asks for another site and drives, not for training.
 
@@ -87,6 +89,7 @@ def write_bundle(
             site and the first drive.
         verdict: of the ablation: `ship`, `sentence`, `confidence`.
         usual: drives on that site where the plan is true, to calibrate the watch by; none for no watch.
+        mover: that chooses where to go next, if any.
 
     Returns:
         `folder`, `bytes` in all, `weights_bytes`, `weights` (how many numbers), `cells`, `poses`.
@@ -99,7 +102,8 @@ def write_bundle(
     folder = Path(folder)
     refuse_to_replace(folder)
     rounded = _rounded(filter_, drives[0], precision)
-    contents = {WEIGHTS: save(rounded.weights), SITE: save(rounded.rings)}
+    moving = {} if mover is None else mover.arrays()
+    contents = {WEIGHTS: save(rounded.weights | moving), SITE: save(rounded.rings)}
     facts = {
         **_facts(filter_),
         "schema": SCHEMA,
@@ -111,6 +115,7 @@ def write_bundle(
         "verdict": None if verdict is None else dict(verdict),
         "cautions": [SAFETY_NOTICE, *_depth_only(filter_), *cautions],
         "watch": None,
+        "mover": None if mover is None else mover.facts(),
     }
     bundle = assemble(folder, facts, contents[WEIGHTS], contents[SITE])
     if usual:

@@ -29,8 +29,7 @@ from learnfilter.runtime.policy import (
     RobotPolicy,
     best,
 )
-
-STILL = Motion(0.0, 0.0, 0.0)
+from learnfilter.runtime.proposing import STILL
 
 
 class Outlooks(NamedTuple):

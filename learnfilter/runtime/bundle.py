@@ -15,13 +15,14 @@ from itertools import pairwise
 from pathlib import Path
 from typing import Any, NoReturn
 
-from learnfilter.core.errors import BundleError
+from learnfilter.core.errors import BundleError, ConfigError
 from learnfilter.core.grid import PoseGrid
 from learnfilter.core.strip import RingLayout, Strip
 from learnfilter.runtime.arrays import Arrays
 from learnfilter.runtime.contract import RobotModel
 from learnfilter.runtime.models import build_model
 from learnfilter.runtime.motion import MotionNoise
+from learnfilter.runtime.mover import RobotMover
 from learnfilter.runtime.schema import hold
 from learnfilter.runtime.site import RobotSite, read_site, reads_field
 from learnfilter.runtime.watch import Watch
@@ -69,6 +70,7 @@ class Bundle:
         model: observation model with its weights.
         watch: to begin with, from what is usual on drives where the plan is true; None where nothing was
             measured.
+        mover: chooses where to go next; None where none was trained.
     """
 
     folder: Path
@@ -79,6 +81,7 @@ class Bundle:
     site: RobotSite
     model: RobotModel
     watch: Watch | None
+    mover: RobotMover | None = None
 
 
 def load_bundle(folder: str | Path) -> Bundle:
@@ -106,6 +109,7 @@ def assemble(folder: Path, manifest: Mapping[str, Any], weights: bytes, site: by
     _check_watch(folder / MANIFEST, watch)
     arrays, rings = Arrays.parse(folder / WEIGHTS, weights), Arrays.parse(folder / SITE, site)
     model = build_model(layout, manifest["model"], arrays)
+    mover = _mover(folder / MANIFEST, manifest["mover"], strip, arrays)
     arrays.none_left()
     return Bundle(
         folder,
@@ -116,6 +120,7 @@ def assemble(folder: Path, manifest: Mapping[str, Any], weights: bytes, site: by
         read_site(grid, layout, manifest["site"], reads_field(manifest["model"]), rings),
         model,
         None if watch is None else Watch.read(watch),
+        mover,
     )
 
 
@@ -188,6 +193,15 @@ def _strip(said: Mapping[str, Any]) -> Strip:
 
 def _layout(said: Mapping[str, Any]) -> RingLayout:
     return RingLayout(**{**said, "source": tuple(said["source"])})
+
+
+def _mover(file: Path, said: Mapping[str, Any] | None, strip: Strip, arrays: Arrays) -> RobotMover | None:
+    if said is None:
+        return None
+    try:
+        return RobotMover.read(said, strip.mount, arrays)
+    except ConfigError as error:
+        raise BundleError("does not fit", file=file, place="mover", got=error) from error
 
 
 def _check_fit(file: Path, strip: Strip, grid: PoseGrid, layout: RingLayout) -> None:

@@ -83,7 +83,7 @@ class Footprint:
     radius_m: float = 0.2
     mount: tuple[float, float, float] = (0.0, 0.0, 0.0)
     clearance_m: float = 0.05
-    skirt_m: float = 0.1
+    skirt_m: float = 0.15
 
     def __post_init__(self) -> None:
         if self.clearance_m <= OUTLINE_STEP_M or self.skirt_m < 0:

@@ -23,24 +23,28 @@ MODE_WIDTH = 16
 MOTION_FACTS = 2 * MODE_WIDTH + 4 + 4 + 2 + VIEW  # mean, variance; motion, last motion; entropy, share; seen
 MOTION_WIDTH = 32
 FAR_M = 5.0  # places farther off than a few times this are alike: elsewhere
+# name, inputs, outputs, what follows
+LAYERS = (
+    ("mode_in", MODE_FACTS, MODE_WIDTH, "relu"),
+    ("mode_out", MODE_WIDTH, MODE_WIDTH, "none"),
+    ("motion_in", MOTION_FACTS, MOTION_WIDTH, "relu"),
+    ("motion_out", MOTION_WIDTH, 1, "none"),
+)
 
 
 class RobotPolicy:
     """Scores motions with weights from training.
 
     Args:
-        arrays: `mode_in`, `mode_out`, `motion_in`, `motion_out`, each with `.weight` [outputs inputs] and
-            `.bias` [outputs].
+        arrays: of each of LAYERS `.weight` [outputs inputs] and `.bias` [outputs].
 
     Raises:
         BundleError: one is missing or has another shape.
     """
 
     def __init__(self, arrays: Arrays):
-        self._mode_in = _layer(arrays, "mode_in", MODE_WIDTH, MODE_FACTS)
-        self._mode_out = _layer(arrays, "mode_out", MODE_WIDTH, MODE_WIDTH)
-        self._motion_in = _layer(arrays, "motion_in", MOTION_WIDTH, MOTION_FACTS)
-        self._motion_out = _layer(arrays, "motion_out", 1, MOTION_WIDTH)
+        layers = [_layer(arrays, name, outputs, inputs) for name, inputs, outputs, _ in LAYERS]
+        self._mode_in, self._mode_out, self._motion_in, self._motion_out = layers
 
     def logits(self, outlook: Outlook, motions: NDArray[np.floating], last: NDArray[np.floating]) -> Floats:
         """Score of every motion; the softmax of them is how likely each is in training.

@@ -25,10 +25,13 @@ class RewardSettings:
     Attributes:
         reward: 'entropy': nats of entropy that a step removes; 'pose': nats that the belief near the true
             pose gains.
-        price_per_m, price_per_rad: nats that a metre and a radian cost.
+        price: nats that a motion costs, however short: without it a policy has no reason to find itself
+            soon, for in the end all ways remove the same entropy.
+        price_per_m, price_per_rad: nats that a metre and a radian cost beyond that.
     """
 
     reward: str = "entropy"
+    price: float = 0.3
     price_per_m: float = 0.1
     price_per_rad: float = 0.02
 
@@ -37,10 +40,11 @@ class RewardSettings:
             raise ConfigError(
                 "unknown reward", place="reward", expected=" or ".join(REWARDS), got=self.reward
             )
-        if min(self.price_per_m, self.price_per_rad) < 0:
+        prices = self.price, self.price_per_m, self.price_per_rad
+        if min(prices) < 0:
             raise ConfigError(
-                "a motion that pays", place="price_per_m, price_per_rad", expected="not below 0",
-                got=(self.price_per_m, self.price_per_rad),
+                "a motion that pays", place="price, price_per_m, price_per_rad", expected="not below 0",
+                got=prices,
             )  # fmt: skip
 
 
@@ -65,8 +69,8 @@ def step_rewards(
         [t].
     """
     known = -entropy if settings.reward == "entropy" else np.log(np.maximum(mass_near_truth, LEAST_MASS))
-    price = settings.price_per_m * metres + settings.price_per_rad * np.abs(radians)
-    return (np.diff(known) - price) / np.log(poses)
+    prices = settings.price + settings.price_per_m * metres + settings.price_per_rad * np.abs(radians)
+    return (np.diff(known) - prices) / np.log(poses)
 
 
 def discounted(reward: ArrayLike, discount: float, last: ArrayLike = 0.0) -> NDArray[np.float64]:

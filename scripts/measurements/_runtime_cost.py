@@ -238,6 +238,12 @@ def _spread(ratios: NDArray[np.float64]) -> dict[str, float]:
     return {"value": float(np.median(ratios)), "low": low, "high": high, "n": len(ratios)}
 
 
+def _peak_bytes() -> int:
+    """Of this process alone; what getrusage says may be its parent's."""
+    lines = Path("/proc/self/status").read_text().splitlines()
+    return next(int(line.split()[1]) * 1024 for line in lines if line.startswith("VmHWM"))
+
+
 def _resident_bytes() -> int:
     pages = int(Path("/proc/self/statm").read_text().split()[1])
     return pages * resource.getpagesize()
@@ -259,7 +265,7 @@ def _alone(folder: str, copies: int) -> dict[str, Any]:
         "until_first_answer_s": loaded_s,
         "full_step_ms": float(np.median(times["lost"]) * 1e3),
         "locked_step_ms": float(np.median(times["locked"]) * 1e3),
-        "peak_gb": resource.getrusage(resource.RUSAGE_SELF).ru_maxrss * 1024 / 1e9,
+        "peak_gb": _peak_bytes() / 1e9,
     }
 
 

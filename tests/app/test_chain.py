@@ -33,7 +33,7 @@ GOOD, WIDE = (
 MODELS = ("beam", "beam+colour", "endpoint", "endpoint+colour", "matcher")
 # DEVELOPERS.md, Formats
 ESTIMATES = ["time_s", "x_m", "y_m", "heading_rad", "covariance", "mass", "entropy_nats", "log_evidence_nats",
-             "surprise", "state", "weighed", "alarm"]  # fmt: skip
+             "surprise", "state", "weighed", "alarm", "move"]  # fmt: skip
 NO_TORCH = """
 import sys
 sys.modules["torch"] = None

@@ -9,7 +9,8 @@ from PIL import Image
 
 from learnfilter.app.build import build_conditions, build_footprint, build_motions, build_plan, build_strip
 from learnfilter.app.command import compose_settings
-from learnfilter.app.config import GridConfig, MotionConfig, MoverConfig, StripConfig, flat, typed
+from learnfilter.app.config import GridConfig, MotionConfig, StripConfig, flat, typed
+from learnfilter.app.mover_config import MoverConfig
 from learnfilter.app.paths import data_dir
 from learnfilter.app.verbs import VERBS
 from learnfilter.core.errors import ConfigError, PlanError
@@ -40,7 +41,7 @@ def strip(**changes: object) -> StripConfig:
 @pytest.mark.parametrize(("group", "option"), [(g, o) for g in GROUPS for o in options(g)])
 def test_every_shipped_option_is_valid(group, option):
     """A settings file that does not fit its class would fail only in a user's hands."""
-    typed(OmegaConf.load(CONFIGS / group / f"{option}.yaml"), GROUPS[group])
+    typed(compose_settings("train", [f"{group}={option}"])[group], GROUPS[group])
 
 
 @pytest.mark.parametrize("verb", VERBS)
@@ -93,7 +94,8 @@ def test_the_colour_strip_looks_symmetrically_over_90_degrees_and_lies_on_the_de
 
 
 def mover(**changes: object) -> MoverConfig:
-    return typed(OmegaConf.merge(OmegaConf.load(CONFIGS / "mover" / "default.yaml"), changes), MoverConfig)
+    shipped = compose_settings("train", ["mover=policy"]).mover
+    return typed(OmegaConf.merge(shipped, changes), MoverConfig)
 
 
 def test_the_shipped_mover_is_what_movers_take_for_granted():
@@ -107,10 +109,12 @@ def test_the_shipped_mover_is_what_movers_take_for_granted():
     [
         ({"moves": [{"distance_m": 0.5, "turn_deg": 90.0}]}, r"mover\.moves"),
         ({"price_nats_per_m": -1.0}, r"mover\.price_nats_per_m"),
+        ({"practice": {"strips": 1}}, r"mover\.practice\.strips"),
+        ({"practice": {"trying": {"validate_every": 5}}}, r"mover\.practice\.trying\.validate_every"),
     ],
 )
 def test_a_mover_that_cannot_be_is_refused(changes, place):
-    """No turn on the spot; a price that pays for driving."""
+    """No turn on the spot; a price that pays for driving; nothing to try; a checkpoint amid a batch."""
     with pytest.raises(ConfigError, match=place):
         build_motions(mover(**changes))
 

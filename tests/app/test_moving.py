@@ -51,7 +51,7 @@ def venue():
 
 
 def practice(strips=4):
-    return Practice(MOTIONS, FOOTPRINT, RewardSettings("entropy", 0.0, 0.0), 2, strips)
+    return Practice(MOTIONS, FOOTPRINT, RewardSettings("entropy", 0.0, 0.0, 0.0), 2, strips)
 
 
 def run(venue, mover, strips, seed=0, **settings):
@@ -150,9 +150,10 @@ def test_lessons_are_what_the_teacher_would_have_done(venue):
         [venue],
         practice(3),
         lambda: Wander(footprint=FOOTPRINT),
-        LeastEntropy(footprint=FOOTPRINT),
+        lambda: LeastEntropy(footprint=FOOTPRINT),
         4,
         stream(0),
+        lambda done, total, note: None,
     )
     assert len(lessons) == 4
     assert all(one.clear[one.choice] for one in lessons)

@@ -66,22 +66,24 @@ METRES, RADIANS = np.array([0.5, 0.0]), np.array([0.2, -0.4])
 
 
 def test_entropy_removed_is_rewarded_and_motion_costs():
-    """One nat removed and half a nat added; 0.1 x 0.5 m, 0.25 x 0.2 and 0.25 x 0.4 rad; over log 100."""
-    settings = RewardSettings("entropy", price_per_m=0.1, price_per_rad=0.25)
-    expected = np.array([1 - 0.05 - 0.05, -0.5 - 0.1]) / np.log(100)
+    """A nat removed, half a nat added; less 0.3, 0.1 x 0.5 m, 0.25 x 0.2 and 0.25 x 0.4 rad; over log 100."""
+    settings = RewardSettings("entropy", price=0.3, price_per_m=0.1, price_per_rad=0.25)
+    expected = np.array([1 - 0.3 - 0.05 - 0.05, -0.5 - 0.3 - 0.1]) / np.log(100)
     found = step_rewards(settings, ENTROPY, NEAR, METRES, RADIANS, 100)
     np.testing.assert_allclose(found, expected, atol=1e-12)
 
 
 def test_belief_gained_at_the_true_pose_is_rewarded():
     """log 4 gained; then all lost, which counts down to a millionth."""
-    settings = RewardSettings("pose", 0.0, 0.0)
+    settings = RewardSettings("pose", 0.0, 0.0, 0.0)
     expected = np.log([0.4 / 0.1, 1e-6 / 0.4]) / np.log(100)
     found = step_rewards(settings, ENTROPY, NEAR, METRES, RADIANS, 100)
     np.testing.assert_allclose(found, expected, atol=1e-12)
 
 
-@pytest.mark.parametrize("bad", [{"reward": "speed"}, {"price_per_m": -0.1}, {"price_per_rad": -1.0}])
+@pytest.mark.parametrize(
+    "bad", [{"reward": "speed"}, {"price": -0.1}, {"price_per_m": -0.1}, {"price_per_rad": -1.0}]
+)
 def test_a_reward_that_makes_no_sense_is_refused(bad):
     """Unknown, or motion that pays."""
     with pytest.raises(ConfigError):

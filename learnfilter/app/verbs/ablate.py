@@ -6,6 +6,9 @@ each model's own confidence can be believed, and one sentence: ship the learned 
 one, or cannot tell. Name the conditions your robot will meet: conditions=[as-trained,dim-light+crowd],
 or conditions=[all]; each is a file in configs/condition, or in condition/ of your --config-dir.
 On your own plan: site=file site.file=PATH, with simulated drives or recorded ones (drives=[a.parquet]).
+With movers=[wander,least-entropy,policy] robots choose their way instead, each mover from the same starts:
+you get strips and metres until they trust their pose, the share located at fixed budgets, contacts and
+the time of a decision; name the look-alike sites you fear: site.families=[doors,racks].
 
 Example:
   learnfilter ablate model=runs/train/cart conditions=[as-trained,dim-light]
@@ -17,8 +20,17 @@ from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
+from learnfilter.ablation.motion_study import mover_scores
 from learnfilter.app.judging import compared, judge_models, watch_first
 from learnfilter.app.models import LEARNED, settings_of, stored
+from learnfilter.app.mover_pages import (
+    mover_forests,
+    mover_headline,
+    mover_lines,
+    mover_summary,
+    mover_table,
+)
+from learnfilter.app.movers import build_movers
 from learnfilter.app.pages import (
     DEPTH_ONLY,
     SIMULATED,
@@ -33,13 +45,49 @@ from learnfilter.app.pages import (
     trust_table,
 )
 from learnfilter.app.runs import open_run
+from learnfilter.app.steering import MotionStudy, check_steering, steered
 from learnfilter.app.studying import study_subject
 from learnfilter.app.verb_settings import AblateConfig
+from learnfilter.core.seeds import stream
 from learnfilter.report import RunPage, write_page
 
 
 def run(settings: AblateConfig) -> dict[str, Any]:
     """Do the verb; returns the summary."""
+    return _compare_movers(settings) if settings.movers else _compare_models(settings)
+
+
+def _compare_movers(settings: AblateConfig) -> dict[str, Any]:
+    run_ = Path(settings.model)
+    made_with = replace(settings_of(run_), runs=settings.runs)
+    check_steering(settings)
+    models = steered(stored(run_, made_with), settings.study.models)
+    study = MotionStudy(settings, made_with, models, build_movers(settings.movers, run_, made_with))
+    folder = open_run("ablate", settings.name or "default", settings)
+    rows = study.run(folder.path)
+    scores = mover_scores(rows, study.budgets, stream(settings.seed, "mover scores"))
+    write_page(
+        RunPage(
+            title=folder.path.name,
+            verb="ablate",
+            headline=mover_headline(scores),
+            confidence=f"{len(rows)} episodes; the table gives the spread.",
+            job=f"Compare movers with models of {settings.model} on {study.title}.",
+            tables=(mover_table(scores),),
+            forests=mover_forests(scores),
+            cautions=(SIMULATED,),
+            provenance=provenance(settings, {name: m.facts["config"] for name, m in models.items()}),
+            settings=settings_text(settings),
+        ),
+        folder.path / "report.html",
+    )
+    summary = folder.finish({"movers": mover_summary(scores), "episodes": len(rows)})
+    print("\n".join(mover_lines(scores)))
+    print(f"written: {folder.path} (report.html, rows.parquet)")
+    return summary
+
+
+def _compare_models(settings: AblateConfig) -> dict[str, Any]:
     made_with = replace(
         settings_of(Path(settings.model)), runs=settings.runs
     )  # the cache is ours, not the trainer's

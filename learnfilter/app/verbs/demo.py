@@ -36,6 +36,7 @@ from learnfilter.app.pages import (
     training_charts,
     trust_table,
 )
+from learnfilter.app.practising import check_practice, train_mover
 from learnfilter.app.replay_page import stories, timeline, trail_map
 from learnfilter.app.replaying import Replayed, replay_bundle
 from learnfilter.app.runs import RunFolder, open_run
@@ -53,6 +54,7 @@ def run(settings: DemoConfig) -> dict[str, Any]:
     """Do the verb; returns the summary."""
     check_invented(settings.site)
     check_search(settings)
+    check_practice(settings)
     site = settings.site
     if site.file:
         build_plan(site)  # a bad plan is refused before hours are spent
@@ -61,6 +63,7 @@ def run(settings: DemoConfig) -> dict[str, Any]:
     clock = time.monotonic()
     made_with = _training_part(settings)
     models = train_models(made_with, folder.path)
+    policy = train_mover(made_with, models, folder.path) if settings.mover.practice else None
     trained_s = time.monotonic() - clock
     subject = study_subject(
         made_with, site, {"as configured": settings.condition}, settings.study, settings.seed
@@ -70,7 +73,9 @@ def run(settings: DemoConfig) -> dict[str, Any]:
     )
     first = next(place for _, place in subject.places())
     shipped = models[LEARNED] if found.verdict.ship == "learned" else models[found.analytic]
-    bundle = export_bundle(made_with, shipped, first.plan, folder.path / "bundle", found.summary())
+    bundle = export_bundle(
+        made_with, shipped, first.plan, folder.path / "bundle", found.summary(), policy=policy
+    )
     bundle["runtime_tv"] = compare(folder.path / "bundle")
     replayed = _replay(folder, first)
     write_page(

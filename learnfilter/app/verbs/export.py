@@ -5,7 +5,8 @@ outputs of whole filter steps), and model and step once more as observe.onnx and
 it with NumPy and safetensors alone: see `learnfilter.runtime`. Any model of a training run can go, the
 analytic ones too; precision=fp16 or int8 makes weights and rings smaller and less exact. How surprising a
 strip usually is on this site is measured on simulated drives, or on recorded ones on which the plan was
-true: drives=[a.parquet,b.parquet]. When the plan changes, export again; nothing is trained anew.
+true: drives=[a.parquet,b.parquet]. A policy that the run has goes along and proposes where to go next.
+When the plan changes, export again; nothing is trained anew.
 
 Example:
   learnfilter export model=runs/train/cart site.file=toy_worlds/lindqvist_office.geojson
@@ -21,6 +22,7 @@ from typing import Any
 from learnfilter.app.build import build_plan, build_strip
 from learnfilter.app.exporting import export_bundle, recorded
 from learnfilter.app.models import chosen, settings_of
+from learnfilter.app.movers import stored_policy
 from learnfilter.app.runs import open_run
 from learnfilter.app.verb_settings import ExportConfig
 from learnfilter.core.errors import ConfigError
@@ -37,7 +39,10 @@ def run(settings: ExportConfig) -> dict[str, Any]:
     folder = open_run("export", settings.name or Path(settings.site.file or "").stem, settings, replace=True)
     out = Path(settings.out) if settings.out else folder.path / "bundle"
     usual = recorded(settings.drives, build_strip(made_with.strip))
-    sizes = export_bundle(made_with, model, plan, out, figures, precision=settings.precision, usual=usual)
+    policy = stored_policy(source)
+    sizes = export_bundle(
+        made_with, model, plan, out, figures, precision=settings.precision, usual=usual, policy=policy
+    )
     sizes["runtime_tv"] = compare(out)
     size = f"{sizes['bytes'] / 1e6:.1f} MB, {sizes['weights']:,} weights, {sizes['poses']:,} poses"
     print(f"written: {out} ({size})")

@@ -3,9 +3,10 @@
 Every strip goes through the NumPy runtime, exactly as on the robot. You get what happened in sentences
 (locked where, and rightly or not; lost through which strips), the parts of the plan that a locked robot
 found otherwise than drawn, and in the run's folder report.html, replay.png, summary.json and
-estimates.parquet (pose, covariance, mass, entropy, surprise and state a row). With site.file=PATH the trail
-is drawn on your plan, without it on the surfaces that the bundle knows. Several bundles are laid side by
-side: bundle=[a,b] writes estimates-NAME.parquet for each. The drive may be longer than memory.
+estimates.parquet (pose, covariance, mass, entropy, surprise, state and proposed move a row). With
+site.file=PATH the trail is drawn on your plan, without it on the surfaces that the bundle knows. Several
+bundles are laid side by side: bundle=[a,b] writes estimates-NAME.parquet for each. The drive may be longer
+than memory.
 
 Example:
   learnfilter replay bundle=runs/export/office/bundle drive=tuesday.parquet site.file=office.geojson
