@@ -102,8 +102,6 @@ def write_bundle(
     folder = Path(folder)
     refuse_to_replace(folder)
     rounded = _rounded(filter_, drives[0], precision)
-    moving = {} if mover is None else mover.arrays()
-    contents = {WEIGHTS: save(rounded.weights | moving), SITE: save(rounded.rings)}
     facts = {
         **_facts(filter_),
         "schema": SCHEMA,
@@ -117,16 +115,7 @@ def write_bundle(
         "watch": None,
         "mover": None if mover is None else mover.facts(),
     }
-    bundle = assemble(folder, facts, contents[WEIGHTS], contents[SITE])
-    if usual:
-        facts["watch"] = calibrate(bundle, usual)
-        bundle = assemble(folder, facts, contents[WEIGHTS], contents[SITE])
-    # vectors are what a port must reproduce, so they come from the numbers it gets
-    contents[VECTORS] = to_bytes(make_vectors(rounded.filter, drives, bundle.watch))
-    facts["files"] = {name: file_entry(content) for name, content in contents.items()}
-    contents |= write_onnx(replace(bundle, manifest=facts))
-    manifest = seal({**facts, "files": {name: file_entry(content) for name, content in contents.items()}})
-    contents[MANIFEST] = (json.dumps(manifest, indent=2, sort_keys=True) + "\n").encode()
+    contents = _contents(facts, rounded, {} if mover is None else mover.arrays(), drives, usual)
     with _whole_folder(folder) as beside:
         for name, content in contents.items():
             _write(beside / name, content)
@@ -139,6 +128,28 @@ def write_bundle(
         "cells": filter_.site.n_cells,
         "poses": filter_.site.n_cells * filter_.site.grid.headings,
     }
+
+
+def _contents(
+    facts: Mapping[str, Any],
+    rounded: _Rounded,
+    moving: Mapping[str, NDArray[Any]],
+    drives: Sequence[Drive],
+    usual: Sequence[Drive],
+) -> dict[str, bytes]:
+    """Every file of a bundle; the watch is calibrated and the vectors are made on the way."""
+    contents = {WEIGHTS: save({**rounded.weights, **moving}), SITE: save(rounded.rings)}
+    bundle = assemble(Path(), facts, contents[WEIGHTS], contents[SITE])
+    if usual:
+        facts = {**facts, "watch": calibrate(bundle, usual)}
+        bundle = assemble(Path(), facts, contents[WEIGHTS], contents[SITE])
+    # vectors are what a port must reproduce, so they come from the numbers it gets
+    contents[VECTORS] = to_bytes(make_vectors(rounded.filter, drives, bundle.watch))
+    so_far = {name: file_entry(content) for name, content in contents.items()}
+    contents |= write_onnx(replace(bundle, manifest={**facts, "files": so_far}))
+    files = {name: file_entry(content) for name, content in contents.items()}
+    manifest = json.dumps(seal({**facts, "files": files}), indent=2, sort_keys=True) + "\n"
+    return {**contents, MANIFEST: manifest.encode()}
 
 
 class _Rounded(NamedTuple):

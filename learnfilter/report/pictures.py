@@ -86,7 +86,7 @@ def draw_replay(drawn: TrailMap, path_png: str | Path) -> None:
         handles += [_styled(axes, trail, n % len(LINE_STYLES)) for n, trail in enumerate(drawn.trails)]
     lost = np.concatenate([trail.pose[np.asarray(trail.lost, bool)] for trail in drawn.trails])
     if len(lost):
-        look = {"marker": "x", "s": 46, "color": "#c65300", "zorder": 7, "label": "lost"}
+        look = {"marker": "x", "s": 46, "color": "#c65300", "zorder": 7, "label": "estimate while lost"}
         handles.append(axes.scatter(lost[:, 0], lost[:, 1], **look))
     locks = np.concatenate([trail.locks for trail in drawn.trails])
     if len(locks):

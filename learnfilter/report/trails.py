@@ -82,7 +82,7 @@ def _legend(drawn: TrailMap, styles: Styles) -> Markup:
         items.append(_item(star, "locked here"))
     if any(np.any(trail.lost) for trail in drawn.trails):
         cross = tag("path", class_="lost-mark", d=CROSS, transform="translate(18 7) scale(4)")
-        items.append(_item(cross, "lost"))
+        items.append(_item(cross, "estimate while lost"))
     items += patch_items(drawn.patches)
     return tag("ul", *items, class_="legend")
 

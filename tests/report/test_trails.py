@@ -38,8 +38,8 @@ def test_the_legend_of_trails_names_what_occurs_and_nothing_else(plan):
     """Without losses, patches and reference their marks are not explained either."""
     whole = trail_map(sample_trails(plan, "matcher", "beam"), STYLES)
     assert words(whole)[:7] == [
-        "matcher", "beam", "reference pose", "locked here", "lost", "not as drawn: looked through",
-        "something new here",
+        "matcher", "beam", "reference pose", "locked here", "estimate while lost",
+        "not as drawn: looked through", "something new here",
     ]  # fmt: skip
     bare = replace(sample_trails(plan, "matcher", lost=0), reference=None, patches=())
     assert words(trail_map(bare, STYLES))[:3] == ["matcher", "locked here", "finish: signal red"]
